@@ -1,5 +1,6 @@
-"""Fit -> `DecayMaps`: each voxel judged."""
+"""Fit -> `DecayMaps`: each voxel judged, and painted with what it was judged to be."""
 
 from liverfe.maps.decay_maps import DecayMaps, VoxelStatus
+from liverfe.maps.judge import judge, repaint
 
-__all__ = ["DecayMaps", "VoxelStatus"]
+__all__ = ["DecayMaps", "VoxelStatus", "judge", "repaint"]

@@ -1,5 +1,14 @@
 """Stack -> `NoiseLevel`: from background air, from residuals, and a rule that chooses."""
 
+from liverfe.noise.air import sigma_from_air
+from liverfe.noise.estimate import estimate_noise
 from liverfe.noise.level import NoiseCandidate, NoiseLevel
+from liverfe.noise.residual import sigma_from_residuals
 
-__all__ = ["NoiseCandidate", "NoiseLevel"]
+__all__ = [
+    "NoiseCandidate",
+    "NoiseLevel",
+    "estimate_noise",
+    "sigma_from_air",
+    "sigma_from_residuals",
+]

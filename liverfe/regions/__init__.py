@@ -1,5 +1,7 @@
-"""Outlines + maps -> `RegionSummary`."""
+"""Outlines + maps -> `RegionSummary`: placement, trimming, censoring, intervals, doubts."""
 
+from liverfe.regions.placement import body_mask, place
+from liverfe.regions.summarise import RegionRules, summarise_region
 from liverfe.regions.summary import (
     Qualifier,
     R2StarSummary,
@@ -8,4 +10,14 @@ from liverfe.regions.summary import (
     ReportableLimits,
 )
 
-__all__ = ["Qualifier", "R2StarSummary", "RegionDecay", "RegionSummary", "ReportableLimits"]
+__all__ = [
+    "Qualifier",
+    "R2StarSummary",
+    "RegionDecay",
+    "RegionRules",
+    "RegionSummary",
+    "ReportableLimits",
+    "body_mask",
+    "place",
+    "summarise_region",
+]

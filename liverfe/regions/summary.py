@@ -102,6 +102,8 @@ class RegionSummary:
         Its voxels before trimming.
     used : ndarray of bool, shape (X, Y, Z)
         Measured voxels that stayed after trimming: those behind mean, SD and quartiles.
+    over_limit : ndarray of bool, shape (X, Y, Z)
+        Its voxels beyond the upper limit, those without signal among them.
     volume_ml : float
         Volume of `mask`, mL.
     n_slices : int
@@ -126,6 +128,7 @@ class RegionSummary:
     source: str
     mask: NDArray[np.bool_]
     used: NDArray[np.bool_]
+    over_limit: NDArray[np.bool_]
     volume_ml: float
     n_slices: int
     n_voxels: int

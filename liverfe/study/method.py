@@ -9,18 +9,7 @@ from dataclasses import asdict, dataclass, fields
 from typing import Any, Literal
 
 from liverfe.errors import UsageError
-
-ESTIMATORS = (
-    "rician-ml",
-    "first-moment",
-    "second-moment",
-    "least-squares",
-    "log-linear",
-    "weighted-log-linear",
-    "truncation",
-    "offset",
-)
-"""Estimators by their trade names; the first is the method of the house."""
+from liverfe.fit import ESTIMATORS
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -62,7 +51,7 @@ class Method:
     n_channels: int | None = None
     voxel_relative_se: float = 0.10
     trim: Literal["none", "mad"] = "mad"
-    trim_mads: float = 4.0
+    trim_mads: float = 3.0
     interval: float = 0.95
     censored_share: float = 0.5
     curve: str | None = None

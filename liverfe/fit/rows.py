@@ -1,0 +1,31 @@
+"""`DecayRows`: fits of a list of voxels, before they are put back on a grid."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+
+@dataclass(frozen=True, slots=True, kw_only=True, eq=False)
+class DecayRows:
+    """Fits of V voxels; fields as in `DecayFit`, each of shape (V,)."""
+
+    r2star_per_s: NDArray[np.float32]
+    s0: NDArray[np.float32]
+    r2star_se_per_s: NDArray[np.float32]
+    reduced_chi2: NDArray[np.float32]
+    outcome: NDArray[np.uint8]
+
+    @classmethod
+    def empty(cls, n_voxels: int) -> DecayRows:
+        """Rows that say NOT_FITTED, with NaN everywhere."""
+        nan = [np.full(n_voxels, np.nan, dtype=np.float32) for _ in range(4)]
+        return cls(
+            r2star_per_s=nan[0],
+            s0=nan[1],
+            r2star_se_per_s=nan[2],
+            reduced_chi2=nan[3],
+            outcome=np.zeros(n_voxels, dtype=np.uint8),
+        )

@@ -1,0 +1,87 @@
+"""How much what is not known of the noise could move the headline: doubt with its effect."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from liverfe.echoes import EchoStack
+from liverfe.errors import Finding
+from liverfe.fit import fit_rows
+from liverfe.noise import NoiseLevel
+from liverfe.regions import RegionSummary
+
+_MATTERS = 0.05
+"""A shift of R2* by this share is told as a caution: it could move a LIC across a decision."""
+_OTHER_CHANNELS = 8
+"""What is tried where the number of channels is unknown: a middling sum of squares."""
+_AGREE = 0.10
+"""Sigmas within this share of each other agree, as in `liverfe.noise`."""
+_MOST_VOXELS = 4000
+
+
+def noise_findings(
+    summary: RegionSummary, stack: EchoStack, noise: NoiseLevel
+) -> tuple[Finding, ...]:
+    """Fit the region again under what else the noise could be, and tell what moves.
+
+    Parameters
+    ----------
+    summary : RegionSummary
+        The headline region.
+    stack, noise
+        Images and the noise level that was used.
+
+    Returns
+    -------
+    tuple of Finding
+        ``noise-disagrees`` or ``noise-cross-check``; ``channels-matter``; or nothing.
+    """
+    sigmas = {c.method: c.sigma for c in noise.candidates if c.sigma is not None}
+    found: list[Finding] = []
+    if {"air", "residual"} <= sigmas.keys():
+        air, residual = sigmas["air"], sigmas["residual"]
+        if abs(residual / air - 1.0) > _AGREE:
+            other = air if noise.method == "residual" else residual
+            shift = _shift(summary, stack, noise, sigma=other, n=noise.n_channels)
+            told = {"air": f"{air:.4g}", "residual": f"{residual:.4g}"}
+            if abs(shift) > _MATTERS:
+                found.append(
+                    Finding.of(
+                        "noise-disagrees", region=summary.name, shift=f"{100 * shift:+.0f}", **told
+                    )
+                )
+            else:
+                found.append(Finding.of("noise-cross-check", **told))
+    if any(finding.code == "channels-not-tested" for finding in noise.findings):
+        shift = _shift(summary, stack, noise, sigma=noise.sigma, n=_OTHER_CHANNELS)
+        if abs(shift) > _MATTERS:
+            found.append(
+                Finding.of(
+                    "channels-matter", region=summary.name, other=_OTHER_CHANNELS,
+                    shift=f"{100 * shift:+.0f}",
+                )
+            )  # fmt: skip
+    return tuple(found)
+
+
+def _shift(
+    summary: RegionSummary, stack: EchoStack, noise: NoiseLevel, *, sigma: float, n: int
+) -> float:
+    """Relative change of the region's median R2* under another sigma or channel count.
+
+    A region over its limit is compared over all its voxels: a change that brings them within
+    reach, or out of it, counts in full.
+    """
+    mask = summary.used if summary.r2star.qualifier == "=" else summary.mask
+    signal = stack.magnitude[mask]
+    signal = signal[:: max(1, len(signal) // _MOST_VOXELS)]
+
+    def median(trial_sigma: float, trial_n: int) -> float:
+        rows = fit_rows(signal, stack.echo_times_ms, np.array([trial_sigma]), trial_n)
+        fast = np.where(np.isfinite(rows.r2star_per_s), rows.r2star_per_s, np.inf)
+        return float(np.median(fast))
+
+    here, there = median(noise.sigma, noise.n_channels), median(sigma, n)
+    if not np.isfinite(here) or not here > 0:
+        return 0.0 if not np.isfinite(there) else 1.0
+    return there / here - 1.0 if np.isfinite(there) else 1.0
