@@ -86,11 +86,13 @@ def sigma_from_air(stack: EchoStack, *, n_channels: int | None = None) -> NoiseC
     chosen = _of_one_level(level[quiet], signal.shape[1])
     if chosen.sum() < _ENOUGH_VOXELS:
         return _closed("no background with one common noise level")
-    air = _late_enough(square[quiet][chosen])
+    air = square[quiet][chosen]
+    trend = _echo_scale_trend_per_s(air, stack.echo_times_ms) if stack.n_echoes > 2 else 0.0
+    air = _late_enough(air)
     moments = _moments(air)
     problem = _why_not(moments, np.sqrt(air))
     if problem:
-        return _closed(problem, len(air))
+        return _closed(problem, len(air), trend)
     n = n_channels or int(np.clip(np.rint(moments.channels), 1, _MOST_CHANNELS))
     sigma = float(np.sqrt(moments.mean_square / (2.0 * n)))
     own = 0.5 * np.sqrt(moments.variance_of_square / air.size) / moments.mean_square
@@ -101,6 +103,7 @@ def sigma_from_air(stack: EchoStack, *, n_channels: int | None = None) -> NoiseC
         relative_sd=max(float(own), _LEAST_RELATIVE_SD),
         n_voxels=len(air),
         remark=f"background tested as {moments.channels:.2f} effective channels",
+        echo_scale_trend_per_s=trend,
     )
 
 
@@ -159,6 +162,11 @@ def _of_one_level(level: Array, n_echoes: int) -> NDArray[np.bool_]:
     return np.asarray((level >= low * best) & (level <= high * best))
 
 
+def _echo_scale_trend_per_s(square: Array, echo_times_ms: Array) -> float:
+    """How fast the noise amplitude grows with echo time, in 1/s: zero unless echoes are scaled."""
+    return float(1e3 * np.polyfit(echo_times_ms, 0.5 * np.log(square.mean(axis=0)), 1)[0])
+
+
 def _late_enough(square: Array) -> Array:
     """Leave out leading echoes in which tissue of very fast decay still shows above the noise.
 
@@ -212,7 +220,8 @@ def _quantum(magnitudes: Array) -> float:
     return float(np.diff(values).min()) if len(values) > 1 else 0.0
 
 
-def _closed(remark: str, n_voxels: int = 0) -> NoiseCandidate:
+def _closed(remark: str, n_voxels: int = 0, trend_per_s: float = 0.0) -> NoiseCandidate:
     return NoiseCandidate(
-        method="air", sigma=None, n_channels=1, relative_sd=None, n_voxels=n_voxels, remark=remark
-    )
+        method="air", sigma=None, n_channels=1, relative_sd=None, n_voxels=n_voxels, remark=remark,
+        echo_scale_trend_per_s=trend_per_s,
+    )  # fmt: skip

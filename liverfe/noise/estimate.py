@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import replace
-
 from liverfe.echoes import EchoStack
 from liverfe.errors import Finding, StudyRefused
 from liverfe.noise.air import sigma_from_air
@@ -12,6 +10,10 @@ from liverfe.noise.residual import sigma_from_residuals
 
 _AGREE = 0.10
 """Air and residuals agree if their sigmas differ by less than this share."""
+
+_SCALE_TREND_PER_S = 5.0
+"""Noise that grows faster with echo time than this is told: it takes as much off every R2*. True
+noise shows less than 1 /s of it (the test for falling signal thins one side)."""
 
 
 def estimate_noise(
@@ -58,12 +60,17 @@ def estimate_noise(
         )  # fmt: skip
         return _level(given, (given,))
     air = sigma_from_air(stack, n_channels=n_channels)
-    residual = sigma_from_residuals(stack, start_sigma=air.sigma)
-    if air.sigma is not None or n_channels is not None:
-        residual = replace(residual, n_channels=n_channels or air.n_channels)
+    residual = sigma_from_residuals(
+        stack, start_sigma=air.sigma, n_channels=n_channels or air.n_channels
+    )
     chosen = _choose(method, air, residual)
-    findings = () if air.sigma is not None or n_channels else (Finding.of("channels-not-tested"),)
-    return _level(chosen, (air, residual), findings)
+    findings = []
+    if air.echo_scale_trend_per_s > _SCALE_TREND_PER_S:
+        shift = f"{air.echo_scale_trend_per_s:.0f}"
+        findings.append(Finding.of("echo-scale-differs", shift=shift))
+    if air.sigma is None and n_channels is None:
+        findings.append(Finding.of("channels-not-tested"))
+    return _level(chosen, (air, residual), tuple(findings))
 
 
 def _choose(method: str, air: NoiseCandidate, residual: NoiseCandidate) -> NoiseCandidate:

@@ -28,6 +28,9 @@ class NoiseCandidate:
         Voxels behind it.
     remark : str
         Why it was taken or not, for the report.
+    echo_scale_trend_per_s : float
+        How fast the noise grows with echo time, 1/s: anything but zero says that the echoes are
+        scaled differently.
     """
 
     method: str
@@ -36,6 +39,7 @@ class NoiseCandidate:
     relative_sd: float | None
     n_voxels: int
     remark: str
+    echo_scale_trend_per_s: float = 0.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)

@@ -21,7 +21,7 @@ from liverfe.fit import (
 )
 from liverfe.noise import NoiseLevel
 from liverfe.regions.limits import upper_limit
-from liverfe.regions.model_checks import misfit_findings, refuse_no_decay
+from liverfe.regions.model_checks import misfit_findings, check_decay
 from liverfe.regions.statistics import (
     censored_quantile,
     correlation_inflation,
@@ -107,8 +107,7 @@ def summarise_region(
     StudyRefused
         ``signal-rises``, ``saturated``, ``most-failed``, ``no-tissue-signal``, ``signal-too-low``.
     """
-    if organ != "background":
-        refuse_no_decay(name, mask, stack)
+    decay_findings = () if organ == "background" else check_decay(name, mask, stack)
     limit, s0, limit_findings = upper_limit(
         name, mask, stack, noise, fit, voxel_relative_se=rules.voxel_relative_se
     )
@@ -121,14 +120,18 @@ def summarise_region(
     r2star, low_limit = _r2star(name, fit, stack, noise, counts, used, limit, s0, rules)
     chi2 = fit.reduced_chi2[used]
     median_chi2 = float(np.median(chi2)) if used.any() and np.isfinite(chi2).all() else None
+    if r2star.qualifier == ">" and decay_findings:
+        # A decay too fast to see cannot come back at a later echo: the echoes are out of order.
+        raise StudyRefused(Finding.of("echoes-out-of-order", region=name), *decay_findings)
     summary_findings = (
         *findings,
+        *decay_findings,
         *limit_findings,
         *_count_findings(name, counts, used, trimmed, n_voxels, limit, r2star),
     )
     if r2star.qualifier == "=" or stack.n_echoes == 2:
         summary_findings += misfit_findings(
-            name, used, stack, noise,
+            name, used | counts.over, stack, noise,
             r2star_per_s=r2star.value, s0=s0, median_chi2=median_chi2,
         )  # fmt: skip
     return RegionSummary(

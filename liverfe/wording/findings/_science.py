@@ -62,6 +62,37 @@ SCIENCE_FINDINGS: dict[str, FindingWording] = {
         effect="R2* and LIC would read zero.",
         remedy="Check EchoTime (0018,0081) against the images, or the order of --echo-times-ms.",
     ),
+    "signal-not-falling": FindingWording(
+        level="caution",
+        text=(
+            "Region {region}: the signal at {later} ms is higher than at {earlier} ms, by {share} % "
+            "of the first echo. One decay cannot rise: this is fat in and out of phase, or echoes "
+            "in a wrong order."
+        ),
+        effect="Two swapped echoes make 15 mg/g read 8; 30 % fat makes 5 read 4.1.",
+        remedy="Check the echo times against the images; use fat-suppressed or in-phase echoes.",
+    ),
+    "echoes-out-of-order": FindingWording(
+        level="stop",
+        text=(
+            "Region {region}: the signal is lost after the first echoes and comes back at later "
+            "ones. The echo times do not belong to these images in this order."
+        ),
+        effect="Echoes sorted by file name make 5 mg/g read 1.4 and 15 read 96.",
+        remedy="Check EchoTime (0018,0081) of each image, or the order of --echo-times-ms.",
+    ),
+    "echo-scale-differs": FindingWording(
+        level="caution",
+        text=(
+            "The background noise grows with echo time: later echoes are scaled up against earlier "
+            "ones, which makes every R2* about {shift} /s too low."
+        ),
+        effect="Echoes scaled to one maximum make 5 mg/g read 4, or zero.",
+        remedy=(
+            "Export without per-image scaling; check RescaleSlope (0028,1053) and private scale "
+            "tags of each echo."
+        ),
+    ),
     "signal-negative": FindingWording(
         level="stop",
         text=(
