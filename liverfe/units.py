@@ -53,8 +53,12 @@ def ms_from_s(seconds: float) -> float:
     return seconds * _MS_PER_S
 
 
-def s_from_ms(milliseconds: float) -> float:
-    """Convert milliseconds to seconds."""
+@overload
+def s_from_ms(milliseconds: float) -> float: ...
+@overload
+def s_from_ms(milliseconds: Array) -> Array: ...
+def s_from_ms(milliseconds: float | Array) -> float | Array:
+    """Convert milliseconds to seconds; an array keeps its shape and kind."""
     return milliseconds / _MS_PER_S
 
 
