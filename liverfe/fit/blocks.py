@@ -7,9 +7,10 @@ server's threads at once.
 
 from __future__ import annotations
 
-import os
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
+
+import numba
 
 _BLOCK = 16_384
 """Rows at a time: small enough to share the work out evenly, large enough to hide the call."""
@@ -26,7 +27,8 @@ def run_in_blocks(work: Callable[[slice], None], n_rows: int) -> None:
         Number of rows.
     """
     slices = [slice(start, min(start + _BLOCK, n_rows)) for start in range(0, n_rows, _BLOCK)]
-    n_threads = min(len(slices), _available_cores())
+    # numba's own setting: the cores open to this process, or the variable NUMBA_NUM_THREADS.
+    n_threads = min(len(slices), numba.config.NUMBA_NUM_THREADS)
     if n_threads <= 1:
         for rows in slices:
             work(rows)
@@ -34,9 +36,3 @@ def run_in_blocks(work: Callable[[slice], None], n_rows: int) -> None:
     with ThreadPoolExecutor(n_threads) as pool:
         for done in [pool.submit(work, rows) for rows in slices]:
             done.result()
-
-
-def _available_cores() -> int:
-    limit = os.environ.get("LIVERFE_THREADS", "")
-    cores = len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
-    return min(cores, int(limit)) if limit.isdigit() and int(limit) > 0 else cores

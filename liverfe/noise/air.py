@@ -12,7 +12,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.special import gammaincinv
+from scipy.special import gammaincinv, stdtrit
 from skimage.filters import threshold_otsu
 
 from liverfe.echoes import EchoStack
@@ -22,14 +22,25 @@ _ENOUGH_VOXELS = 400
 """Below this many air voxels the number of channels cannot be told."""
 _MOST_VOXELS = 200_000
 """More voxels add nothing: sigma is then known to 0.1 %."""
-_TREND_T = 2.5
-"""A voxel whose signal falls with echo time by more than this many standard errors is no air."""
+_TREND_CHANCE = 0.01
+"""A voxel whose signal falls with echo time more than noise does by this chance is no air; those
+that rise as much go too, or the rest would rise."""
 _TAIL = 0.005
 """Share of true noise voxels that the selection by mean square may lose at each end."""
 _SAME_IN_VOXELS = (0.6, 1.5)
 """Variance between voxels over what the variance within them predicts: 1 for pure noise."""
+_NEIGHBOURS = 64
+"""Voxels in a row whose mean is compared with the others': what no single voxel shows, they do."""
+_UNEVEN = 0.15
+"""Sigma² may differ over the image by this share (SD): a ghost over half of the air that makes it so
+makes sigma 8 % too high."""
 _SAME_IN_ECHOES = 1.10
 """Largest over smallest mean square of the echoes: 1 for pure noise."""
+_BY_CHANCE = 4.0
+"""Both may be exceeded by this many standard errors."""
+_STANDS_OUT = 10.0
+"""Amplitude of the brightest percent in sigma. Where nothing is so bright, what is darkest may be
+tissue, whose few echoes at low signal look like the noise of many channels."""
 _NATURAL_ZEROS = 4.0
 """Exact zeros up to this many times what quantisation explains are noise, more are a mask."""
 _LEAST_RELATIVE_SD = 0.005
@@ -44,6 +55,7 @@ class _Moments:
     mean_square: float
     variance_of_square: float
     between_over_within: float
+    unevenness: float
     echo_spread: float
     n_voxels: int
     n_echoes: int
@@ -51,7 +63,20 @@ class _Moments:
     @property
     def channels(self) -> float:
         """Central chi: M²/sigma² is chi-square with 2n degrees, so n = mean² / variance."""
-        return self.mean_square**2 / self.variance_of_square
+        variance = self.variance_of_square
+        return self.mean_square**2 / variance if variance > 0 else float(_MOST_CHANNELS)
+
+    @property
+    def between_limit(self) -> float:
+        """Largest believable `between_over_within`, with its standard error for chi-squares."""
+        kurtosis = 2.0 * 6.0 / self.channels / self.n_echoes
+        se = np.sqrt((2.0 + 2.0 / (self.n_echoes - 1) + kurtosis) / self.n_voxels)
+        return float(_SAME_IN_VOXELS[1] + _BY_CHANCE * se)
+
+    @property
+    def echo_limit(self) -> float:
+        """Largest believable `echo_spread`: a mean of N chi-squares varies by 1 / sqrt(n N)."""
+        return float(_SAME_IN_ECHOES + _BY_CHANCE / np.sqrt(self.channels * self.n_voxels))
 
 
 def sigma_from_air(stack: EchoStack, *, n_channels: int | None = None) -> NoiseCandidate:
@@ -80,7 +105,7 @@ def sigma_from_air(stack: EchoStack, *, n_channels: int | None = None) -> NoiseC
         return _closed("too few voxels with any value")
     square = signal.astype(np.float64) ** 2
     level = square.mean(axis=1)
-    quiet = (level <= _dark_threshold(level)) & ~_falls(signal)
+    quiet = (level <= _dark_threshold(level)) & ~_has_trend(signal)
     if quiet.sum() < _ENOUGH_VOXELS:
         return _closed("no background in view")
     chosen = _of_one_level(level[quiet], signal.shape[1])
@@ -90,11 +115,13 @@ def sigma_from_air(stack: EchoStack, *, n_channels: int | None = None) -> NoiseC
     trend = _echo_scale_trend_per_s(air, stack.echo_times_ms) if stack.n_echoes > 2 else 0.0
     air = _late_enough(air)
     moments = _moments(air)
-    problem = _why_not(moments, np.sqrt(air))
-    if problem:
-        return _closed(problem, len(air), trend)
     n = n_channels or int(np.clip(np.rint(moments.channels), 1, _MOST_CHANNELS))
     sigma = float(np.sqrt(moments.mean_square / (2.0 * n)))
+    problem = _why_not(moments, np.sqrt(air))
+    if np.percentile(square[:, 0], 99.0) - moments.mean_square < (_STANDS_OUT * sigma) ** 2:
+        problem = problem or "nothing in view stands out from the background: it may be tissue"
+    if problem:
+        return _closed(problem, len(air), trend)
     own = 0.5 * np.sqrt(moments.variance_of_square / air.size) / moments.mean_square
     return NoiseCandidate(
         method="air",
@@ -129,8 +156,8 @@ def _dark_threshold(level: Array) -> float:
     return float(np.exp(threshold_otsu(np.log(level[level > 0]), nbins=128)))
 
 
-def _falls(signal: NDArray[np.float32]) -> NDArray[np.bool_]:
-    """Whether the signal falls with echo number by more than its own scatter explains."""
+def _has_trend(signal: NDArray[np.float32]) -> NDArray[np.bool_]:
+    """Whether the signal falls (or rises) with echo number by more than its own scatter explains."""
     n_echoes = signal.shape[1]
     if n_echoes < 4:
         return np.zeros(len(signal), dtype=bool)
@@ -140,7 +167,8 @@ def _falls(signal: NDArray[np.float32]) -> NDArray[np.bool_]:
     slope = m @ x / (x @ x)
     rest = m - slope[:, None] * x
     se = np.sqrt((rest**2).sum(axis=1) / (n_echoes - 2) / (x @ x))
-    return np.asarray(slope < -_TREND_T * np.maximum(se, 1e-30))
+    limit = stdtrit(n_echoes - 2, 1.0 - _TREND_CHANCE)
+    return np.asarray(np.abs(slope) > limit * np.maximum(se, 1e-30))
 
 
 def _of_one_level(level: Array, n_echoes: int) -> NDArray[np.bool_]:
@@ -163,8 +191,15 @@ def _of_one_level(level: Array, n_echoes: int) -> NDArray[np.bool_]:
 
 
 def _echo_scale_trend_per_s(square: Array, echo_times_ms: Array) -> float:
-    """How fast the noise amplitude grows with echo time, in 1/s: zero unless echoes are scaled."""
-    return float(1e3 * np.polyfit(echo_times_ms, 0.5 * np.log(square.mean(axis=0)), 1)[0])
+    """How fast the noise amplitude grows with echo time, in 1/s: zero unless echoes are scaled.
+
+    Zero too where so few voxels show such a trend by chance.
+    """
+    mean = square.mean(axis=0)
+    t = echo_times_ms - echo_times_ms.mean()
+    trend = t @ (0.5 * np.log(mean)) / (t @ t)
+    se = np.sqrt((t**2 * (0.5 * square.std(axis=0) / mean) ** 2).sum() / len(square)) / (t @ t)
+    return float(1e3 * trend) if abs(trend) > _BY_CHANCE * se else 0.0
 
 
 def _late_enough(square: Array) -> Array:
@@ -173,10 +208,9 @@ def _late_enough(square: Array) -> Array:
     Voxels of an iron-loaded liver that are dark from the second echo on are noise there, and
     counted as such; their first echoes are not.
     """
-    per_echo = square.mean(axis=0)
-    for first in range(0, max(square.shape[1] // 2, 1)):
-        rest = per_echo[first:]
-        if len(rest) >= 2 and rest.max() <= _SAME_IN_ECHOES * rest.min():
+    for first in range(max(square.shape[1] // 2, 1)):
+        moments = _moments(square[:, first:])
+        if moments.echo_spread <= moments.echo_limit:
             return square[:, first:]
     return square
 
@@ -190,18 +224,29 @@ def _moments(square: Array) -> _Moments:
         mean_square=float(square.mean()),
         variance_of_square=float(within),
         between_over_within=float(between / within) if within > 0 else np.inf,
+        unevenness=_unevenness(square.mean(axis=1), within / n_echoes),
         echo_spread=float(per_echo.max() / per_echo.min()),
         n_voxels=n_voxels,
         n_echoes=n_echoes,
     )
 
 
+def _unevenness(level: Array, variance: float) -> float:
+    """SD of the level from place to place as a share of it, less what chance explains."""
+    n_rows = len(level) // _NEIGHBOURS
+    if n_rows < 2:
+        return 0.0
+    rows = level[: n_rows * _NEIGHBOURS].reshape(n_rows, -1).mean(axis=1)
+    by_chance = variance / _NEIGHBOURS * (1.0 + _BY_CHANCE * np.sqrt(2.0 / n_rows))
+    return float(np.sqrt(max(rows.var(ddof=1) - by_chance, 0.0)) / level.mean())
+
+
 def _why_not(moments: _Moments, magnitudes: Array) -> str:
     """What speaks against taking these voxels as noise; empty if nothing does."""
-    low, high = _SAME_IN_VOXELS
-    if not low <= moments.between_over_within <= high:
+    same = _SAME_IN_VOXELS[0] <= moments.between_over_within <= moments.between_limit
+    if not same or moments.unevenness > _UNEVEN:
         return "the background differs from place to place: it is not noise alone"
-    if moments.echo_spread > _SAME_IN_ECHOES:
+    if moments.echo_spread > moments.echo_limit:
         return "the background changes with echo time: it is not noise alone"
     if moments.channels < 0.8:
         return "the background is not distributed as the noise of any number of coils"

@@ -7,13 +7,15 @@ from numpy.typing import NDArray
 
 from liverfe.echoes import EchoStack
 from liverfe.errors import Finding, StudyRefused
-from liverfe.fit import fit_rows, r2star_bound_per_s
+from liverfe.fit import fit_rows, noise_floor, r2star_bound_per_s
 from liverfe.noise import NoiseLevel
 
 Mask = NDArray[np.bool_]
 
 _RISE = 1.02
 """A last echo this much above the first is no decay; noise of a region's mean is far below."""
+_SIGNAL_OVER_FLOOR = 1.25
+"""Only a mean this far above the noise floor is signal; below, it rises and falls by chance."""
 _RISE_BETWEEN = 0.10
 """An echo this share of the first above an earlier one is told: fat in phase, or a wrong order."""
 _SATURATED_SHARE = 0.02
@@ -34,7 +36,9 @@ _FEWEST_ECHOES = 5
 """With fewer, leaving one out says more about the others' spacing than about itself."""
 
 
-def check_decay(name: str, mask: Mask, stack: EchoStack) -> tuple[Finding, ...]:
+def check_decay(
+    name: str, mask: Mask, stack: EchoStack, noise: NoiseLevel
+) -> tuple[Finding, ...]:
     """Refuse a region whose signal rises with echo time or is cut off at a plateau.
 
     Parameters
@@ -43,8 +47,8 @@ def check_decay(name: str, mask: Mask, stack: EchoStack) -> tuple[Finding, ...]:
         The region's name.
     mask : ndarray of bool, shape (X, Y, Z)
         Its voxels.
-    stack : EchoStack
-        The images.
+    stack, noise
+        Images and noise.
 
     Returns
     -------
@@ -58,7 +62,8 @@ def check_decay(name: str, mask: Mask, stack: EchoStack) -> tuple[Finding, ...]:
     """
     signal = stack.magnitude[mask]
     mean = signal.mean(axis=0, dtype=np.float64)
-    if mean[-1] > _RISE * mean[0]:
+    floor = _SIGNAL_OVER_FLOOR * noise_floor(noise.n_channels) * noise.sigma
+    if mean[-1] > max(_RISE * mean[0], floor):
         raise StudyRefused(
             Finding.of(
                 "signal-rises", region=name, first=f"{mean[0]:.4g}", last=f"{mean[-1]:.4g}",
@@ -68,7 +73,7 @@ def check_decay(name: str, mask: Mask, stack: EchoStack) -> tuple[Finding, ...]:
     low_so_far = np.minimum.accumulate(mean)
     later = int(np.argmax(mean - low_so_far))
     rise = float(mean[later] - low_so_far[later]) / float(mean[0])
-    if rise > _RISE_BETWEEN:
+    if rise > _RISE_BETWEEN and mean[later] > floor:
         earlier = int(np.argmin(mean[: later + 1]))
         facts = {
             "region": name, "share": f"{100 * rise:.0f}",

@@ -107,7 +107,7 @@ def summarise_region(
     StudyRefused
         ``signal-rises``, ``saturated``, ``most-failed``, ``no-tissue-signal``, ``signal-too-low``.
     """
-    decay_findings = () if organ == "background" else check_decay(name, mask, stack)
+    decay_findings = () if organ == "background" else check_decay(name, mask, stack, noise)
     limit, s0, limit_findings = upper_limit(
         name, mask, stack, noise, fit, voxel_relative_se=rules.voxel_relative_se
     )
