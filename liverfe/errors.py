@@ -15,8 +15,7 @@ from __future__ import annotations
 from collections.abc import Iterable
 from dataclasses import dataclass
 
-from liverfe.wording import FINDING_TABLE
-from liverfe.wording.findings._entry import Level
+from liverfe.wording import FINDING_TABLE, Level
 
 __all__ = ["Finding", "Level", "LiverfeError", "ResultDiffers", "StudyRefused", "UsageError"]
 

@@ -28,11 +28,14 @@ class Grid:
         right, +y anterior, +z superior (as in NIfTI).
     slice_thickness_mm : float or None
         Thickness of excitation as the file states it; the spacing of slices is in the affine.
+    frame_of_reference_uid : str
+        DICOM frame of reference of the millimetres; empty where the source names none.
     """
 
     shape: tuple[int, int, int]
     affine_mm: NDArray[np.float64]
     slice_thickness_mm: float | None = None
+    frame_of_reference_uid: str = ""
 
     def __post_init__(self) -> None:
         if len(self.shape) != 3 or min(self.shape) < 1:

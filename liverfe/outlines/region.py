@@ -77,12 +77,15 @@ class Region:
         Where it lies in the patient.
     source : str
         Where it came from, for the report: ``outline file``, ``label image``, ...
+    frame_of_reference_uid : str
+        DICOM frame of reference that it was drawn on; empty where its source names none.
     """
 
     name: str
     organ: str
     shape: tuple[Outline, ...] | LabelMask
     source: str = ""
+    frame_of_reference_uid: str = ""
 
     def __post_init__(self) -> None:
         name = "".join(char for char in self.name if char.isprintable()).strip()

@@ -6,7 +6,7 @@ twice. `docs/reference/findings.md` is generated from here.
 
 from liverfe.wording.findings._acquire import ACQUIRE_FINDINGS
 from liverfe.wording.findings._calibration import CALIBRATION_FINDINGS
-from liverfe.wording.findings._entry import FindingWording
+from liverfe.wording.findings._entry import FindingWording, Level
 from liverfe.wording.findings._journey import JOURNEY_FINDINGS
 from liverfe.wording.findings._science import SCIENCE_FINDINGS
 
@@ -20,4 +20,4 @@ FINDING_TABLE: dict[str, FindingWording] = {
 if len(FINDING_TABLE) != sum(len(part) for part in _PARTS):  # pragma: no cover
     raise AssertionError("a finding code is written in two files of liverfe.wording.findings")
 
-__all__ = ["FINDING_TABLE", "FindingWording"]
+__all__ = ["FINDING_TABLE", "FindingWording", "Level"]

@@ -1,0 +1,1 @@
+"""DICOM files -> plans and arrays."""

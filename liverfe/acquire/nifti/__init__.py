@@ -1,0 +1,1 @@
+"""NIfTI files and their sidecars -> plans and arrays."""
