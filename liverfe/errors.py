@@ -78,7 +78,9 @@ class Finding:
 
     def __post_init__(self) -> None:
         if self.code not in FINDING_TABLE:
-            raise ValueError(f"unknown finding code {self.code!r}: add it to liverfe.wording.findings")
+            raise ValueError(
+                f"unknown finding code {self.code!r}: add it to liverfe.wording.findings"
+            )
 
     @classmethod
     def of(cls, code: str, /, **facts: object) -> Finding:

@@ -37,7 +37,9 @@ def settle_field_strength(
         ``field-from-frequency`` (note), ``field-conflict`` (caution) or nothing.
     """
     stated = stated_t if stated_t and stated_t > 0 else None
-    frequency = imaging_frequency_mhz if imaging_frequency_mhz and imaging_frequency_mhz > 0 else None
+    frequency = (
+        imaging_frequency_mhz if imaging_frequency_mhz and imaging_frequency_mhz > 0 else None
+    )
     if frequency is None:
         return stated, ()
     measured_t = field_t_from_frequency_mhz(frequency)
@@ -49,6 +51,8 @@ def settle_field_strength(
         return stated, ()
     if abs(stated - measured_t) <= _BELIEVABLE_RATIO * stated:
         return measured_t, (
-            Finding.of("field-from-frequency", stated=f"{stated:g} T", measured=f"{measured_t:.3f}"),
+            Finding.of(
+                "field-from-frequency", stated=f"{stated:g} T", measured=f"{measured_t:.3f}"
+            ),
         )
     return None, (Finding.of("field-conflict", stated=f"{stated:g}", measured=f"{measured_t:.3f}"),)

@@ -77,9 +77,11 @@ def r2star_shift_per_s(
     """
     f00, f01, f11, a = _weights(echo_times_ms, r2star_per_s, s0, sigma, n)
     t = np.asarray(echo_times_ms, dtype=np.float64)
-    slope = signal.expected_slope(a, n)
+    tables = signal_tables(n)
+    u = a / (a + tables.amplitude_scale)
+    slope, excess = look_up(tables.slope, u), look_up(tables.excess, u)
     # d(sigma E[m](A/sigma)) / d ln sigma, in sigma; weights are information / slope².
-    change = a + signal.expected_excess(a, n) - a * slope
+    change = a + excess - a * slope
     weight = np.divide(_information(a, n), slope, out=np.zeros_like(a), where=slope > 1e-12)
     g0 = (weight * a * change).sum(axis=-1)
     g1 = (-t * weight * a * change).sum(axis=-1)
@@ -174,7 +176,9 @@ def _weights(
 ) -> tuple[Array, Array, Array, Array]:
     """Information matrix in (ln S0, R2* per ms), and the amplitudes in sigma, shape (..., E)."""
     t = np.asarray(echo_times_ms, dtype=np.float64)
-    rate, s0, sigma = (np.asarray(x, dtype=np.float64)[..., None] for x in (r2star_per_s, s0, sigma))
+    rate, s0, sigma = (
+        np.asarray(x, dtype=np.float64)[..., None] for x in (r2star_per_s, s0, sigma)
+    )
     a = signal.amplitude(s0, rate, t) / sigma
     weight = a**2 * _information(a, n)
     return weight.sum(axis=-1), -(t * weight).sum(axis=-1), (t**2 * weight).sum(axis=-1), a

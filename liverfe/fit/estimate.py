@@ -117,9 +117,7 @@ def _judge_like_the_house(
     rate, s0 = rows.r2star_per_s[fitted].astype(np.float64), rows.s0[fitted].astype(np.float64)
     positive = np.maximum(rate, 0.0)
     with np.errstate(over="ignore"):  # a bound beyond float32 is as good as infinite
-        rows.r2star_se_per_s[fitted] = r2star_bound_per_s(
-            echo_times_ms, positive, s0, sigmas, n=n
-        )
+        rows.r2star_se_per_s[fitted] = r2star_bound_per_s(echo_times_ms, positive, s0, sigmas, n=n)
     if len(echo_times_ms) > 2:
         tables = signal_tables(n)
         a = (s0 / sigmas)[:, None] * np.exp(-positive[:, None] * echo_times_ms * 1e-3)

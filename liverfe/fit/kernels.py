@@ -207,7 +207,7 @@ def fit_maximum_likelihood(
         if outcome == NOT_CONVERGED and not se < _UNRESOLVED * rate:
             outcome = AT_UPPER_BOUND
         outcome_out[v] = outcome
-        if outcome == CONVERGED or outcome == AT_LOWER_BOUND:
+        if outcome == CONVERGED or outcome == AT_LOWER_BOUND:  # noqa: SIM109 - compiled
             rate_out[v] = rate * 1000.0
             s0_out[v] = np.exp(log_s0) / scale
             se_out[v] = se * 1000.0

@@ -14,8 +14,8 @@ from scipy import special
 Array = NDArray[np.float64]
 
 _SERIES_FROM = 30.0
-"""From this amplitude on the asymptotic series replaces the closed form, whose terms cancel; its four
-terms leave a relative error below 1e-9 there (tests)."""
+"""From this amplitude on the asymptotic series replaces the closed form, whose terms cancel; its
+four terms leave a relative error below 1e-9 there (tests)."""
 
 _BESSEL_UP_TO = 1e8
 """Up to this argument the library's Bessel functions hold (they are NaN from 1e9 on); beyond it the
@@ -76,11 +76,11 @@ def expected_excess(a: ArrayLike, n: int = 1) -> Array:
         return np.asarray((weight * (m - a[..., None])).sum(axis=-1))
     small = np.minimum(a, _SERIES_FROM)
     u = small**2 / 4.0
-    closed = np.sqrt(np.pi / 2.0) * (
-        (1.0 + 2.0 * u) * special.i0e(u) + 2.0 * u * special.i1e(u)
-    )
+    closed = np.sqrt(np.pi / 2.0) * ((1.0 + 2.0 * u) * special.i0e(u) + 2.0 * u * special.i1e(u))
     large = np.maximum(a, _SERIES_FROM)
-    series = (1.0 + (1.0 + (3.0 + 37.5 / large**2) / (2.0 * large**2)) / (4.0 * large**2)) / (2.0 * large)
+    series = (1.0 + (1.0 + (3.0 + 37.5 / large**2) / (2.0 * large**2)) / (4.0 * large**2)) / (
+        2.0 * large
+    )
     return np.where(a < _SERIES_FROM, closed - small, series)
 
 

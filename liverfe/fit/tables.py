@@ -35,6 +35,8 @@ class SignalTables:
         `signal.log_likelihood_kernel` plus ``(n - 1/2) ln(z + product_scale)`` over z.
     excess : ndarray of float64, shape (N, 4)
         `signal.expected_excess` over a.
+    slope : ndarray of float64, shape (N, 4)
+        `signal.expected_slope` over a.
     information : ndarray of float64, shape (N, 4)
         `signal.information` over a.
     product_scale, amplitude_scale : float
@@ -45,6 +47,7 @@ class SignalTables:
     ratio: Array
     kernel: Array
     excess: Array
+    slope: Array
     information: Array
     product_scale: float
     amplitude_scale: float
@@ -64,6 +67,7 @@ def signal_tables(n: int) -> SignalTables:
         ratio=_pieces(lambda z: signal.bessel_ratio(z, n), product_scale, 1.0),
         kernel=_pieces(kernel, product_scale, -0.5 * float(np.log(2.0 * np.pi))),
         excess=_pieces(lambda a: signal.expected_excess(a, n), amplitude_scale, 0.0),
+        slope=_pieces(lambda a: signal.expected_slope(a, n), amplitude_scale, 1.0),
         information=_pieces(lambda a: signal.information(a, n), amplitude_scale, 1.0),
         product_scale=product_scale,
         amplitude_scale=amplitude_scale,
@@ -83,7 +87,9 @@ def _pieces(function: Callable[[Array], Array], scale: float, at_infinity: float
         slope[k + step] = step * (-3 * v[0] - 10 * v[1] + 18 * v[2] - 6 * v[3] + v[4]) / 12.0
     rise = value[1:] - value[:-1]
     left, right = slope[:-1], slope[1:]
-    return np.stack([value[:-1], left, 3.0 * rise - 2.0 * left - right, left + right - 2.0 * rise], axis=1)
+    return np.stack(
+        [value[:-1], left, 3.0 * rise - 2.0 * left - right, left + right - 2.0 * rise], axis=1
+    )
 
 
 def look_up(pieces: Array, u: Array) -> Array:

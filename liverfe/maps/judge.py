@@ -126,6 +126,7 @@ def _limits(
     known = ~np.isnan(limits)
     if not known.any():
         return np.full(len(snr), np.nan)
+    # Below the first point there is no limit: an S0 of zero lies there too.
     return np.interp(
-        np.log(snr), np.log(points[known]), limits[known], left=np.nan, right=limits[known][-1]
+        np.log(np.maximum(snr, 0.5 * points[0])), np.log(points[known]), limits[known], left=np.nan, right=limits[known][-1]
     )

@@ -32,7 +32,7 @@ _SAME_IN_VOXELS = (0.6, 1.5)
 _NEIGHBOURS = 64
 """Voxels in a row whose mean is compared with the others': what no single voxel shows, they do."""
 _UNEVEN = 0.15
-"""Sigma² may differ over the image by this share (SD): a ghost over half of the air that makes it so
+"""Sigma² may differ over the image by this share (SD): a ghost over half of the air that does so
 makes sigma 8 % too high."""
 _SAME_IN_ECHOES = 1.10
 """Largest over smallest mean square of the echoes: 1 for pure noise."""
@@ -157,7 +157,7 @@ def _dark_threshold(level: Array) -> float:
 
 
 def _has_trend(signal: NDArray[np.float32]) -> NDArray[np.bool_]:
-    """Whether the signal falls (or rises) with echo number by more than its own scatter explains."""
+    """Whether the signal falls or rises with echo number more than its own scatter explains."""
     n_echoes = signal.shape[1]
     if n_echoes < 4:
         return np.zeros(len(signal), dtype=bool)

@@ -81,7 +81,8 @@ def _choose(method: str, air: NoiseCandidate, residual: NoiseCandidate) -> Noise
         raise StudyRefused(Finding.of("noise-unknown", reasons=reasons))
     if len(usable) == 1:
         return usable[0]
-    assert air.sigma is not None and residual.sigma is not None
+    assert air.sigma is not None
+    assert residual.sigma is not None
     agree = abs(residual.sigma / air.sigma - 1.0) <= _AGREE
     return air if agree else residual
 

@@ -49,7 +49,7 @@ class NoiseLevel:
     Attributes
     ----------
     sigma : float
-        Noise SD per real or imaginary channel, in signal units; the median where `sigma_map` is set.
+        Noise SD per real or imaginary channel, signal units; the median where `sigma_map` is set.
     n_channels : int
         Effective number of coil channels of the magnitude (1: Rician).
     method : str

@@ -71,9 +71,9 @@ def sigma_from_residuals(
     for _ in range(_ROUNDS):
         power = square - (2 * n_channels - 1) * sigma**2
         leading = np.cumprod(power[1] > (_HIGH_SIGNAL * sigma) ** 2, axis=1).sum(axis=1)
-        still = np.cumprod(
-            (power[[0, 2]] > (_STILL_SIGNAL * sigma) ** 2).all(axis=0), axis=1
-        ).sum(axis=1)
+        still = np.cumprod((power[[0, 2]] > (_STILL_SIGNAL * sigma) ** 2).all(axis=0), axis=1).sum(
+            axis=1
+        )
         enough = (leading >= _FEWEST_ECHOES) & (still >= leading)
         n_voxels = int(enough.sum())
         if n_voxels < _ENOUGH_VOXELS:
@@ -124,7 +124,7 @@ def _weighted_rss(
 ) -> Array:
     """Weighted residual sum of squares of ``ln(A1 / A2)`` over the first `kept` echoes of each row.
 
-    Both are A² with noise; with n channels ``ln A`` has the variance ``sigma² (A² + n sigma²) / A⁴``.
+    Both are A² with noise; with n channels ln A has the variance ``sigma² (A² + n sigma²) / A⁴``.
     """
     used = np.arange(one.shape[1]) < kept[:, None]
     p, q = np.where(used, one, 1.0), np.where(used, other, 1.0)

@@ -10,18 +10,27 @@ import re
 _ORGAN_WORDS: dict[str, tuple[str, ...]] = {
     "spleen": ("spleen", "splenic"),
     "muscle": ("muscle", "paraspinal", "psoas", "erector"),
-    "vessel": ("vessel", "vessels", "vein", "artery", "aorta", "vena", "portal", "cava", "blood"),
+    "vessel": (
+        "vessel", "vein", "artery", "arteries", "aorta", "vena", "portal", "cava", "ivc", "blood",
+    ),
     "fat": ("fat", "adipose", "subcutaneous"),
     "kidney": ("kidney", "renal", "cortex", "medulla"),
     "pancreas": ("pancreas", "pancreatic"),
     "heart": ("heart", "myocardium", "septum", "cardiac"),
-    "marrow": ("marrow", "vertebra", "vertebral", "bone"),
+    "marrow": ("marrow", "vertebra", "vertebrae", "vertebral", "bone", "spine"),
     "gallbladder": ("gallbladder", "gall", "bile"),
     "lung": ("lung",),
-    "lesion": ("lesion", "cyst", "tumour", "tumor", "haemangioma", "hemangioma"),
+    "lesion": (
+        "lesion", "cyst", "tumour", "tumor", "haemangioma", "hemangioma", "metastasis",
+        "metastases", "hcc", "abscess",
+    ),
     "background": ("background", "air", "noise"),
     "phantom": ("vial", "tube", "phantom"),
-}
+}  # fmt: skip
+"""Plurals with s are understood."""
+
+_WITHOUT = ("without", "minus", "excluding", "excl", "except", "avoiding", "avoid", "sparing", "no")
+"""What follows these is what the region leaves out."""
 
 
 def organ_from_name(name: str) -> str:
@@ -36,13 +45,16 @@ def organ_from_name(name: str) -> str:
     -------
     str
         ``liver`` unless a word of the name is another organ or tissue. ``hepatic vein`` is a
-        vessel; ``liver without vessels`` is liver, since what follows *without* is left out.
+        vessel; ``liver without vessels`` is liver, since what follows *without* is left out; ``not
+        liver`` is ``other``.
     """
-    words = re.split(r"[^a-z]+", name.lower())
-    for stop in ("without", "minus", "excluding", "no"):
+    words = re.split(r"[^a-z]+", name.lower().replace("w/o", "without"))
+    for stop in _WITHOUT:
         if stop in words:
             words = words[: words.index(stop)]
-    return next((o for o, names in _ORGAN_WORDS.items() if set(words) & set(names)), "liver")
+    told = {*words, *(word.removesuffix("s") for word in words)}
+    organ = next((o for o, names in _ORGAN_WORDS.items() if told & set(names)), "liver")
+    return "other" if organ == "liver" and told & {"non", "not"} else organ
 
 
 def is_whole_liver(name: str) -> bool:

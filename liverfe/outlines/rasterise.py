@@ -64,11 +64,14 @@ def _fill(outlines: tuple[Outline, ...], grid: Grid, name: str) -> NDArray[np.bo
         for outline in outlines:
             if outline.role != role:
                 continue
-            corners = grid.to_indices(outline.points_mm)
+            # Rounded, so that no digit of the affine decides on a voxel centre on the very edge.
+            corners = np.round(grid.to_indices(outline.points_mm), 6)
             k = int(np.rint(np.median(corners[:, 2])))
             if np.abs(corners[:, 2] - np.median(corners[:, 2])).max() > _IN_PLANE_TOLERANCE:
                 raise ValueError(f"region {name!r}: an outline does not lie in one slice")
             if 0 <= k < grid.shape[2]:
                 filled = polygon2mask(grid.shape[:2], corners[:, :2])
-                inside[..., k] = inside[..., k] | filled if role == "include" else inside[..., k] & ~filled
+                inside[..., k] = (
+                    inside[..., k] | filled if role == "include" else inside[..., k] & ~filled
+                )
     return inside

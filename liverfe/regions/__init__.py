@@ -1,7 +1,7 @@
 """Outlines + maps -> `RegionSummary`: placement, trimming, censoring, intervals, doubts."""
 
 from liverfe.regions.placement import body_mask, place
-from liverfe.regions.summarise import RegionRules, summarise_region
+from liverfe.regions.summarise import summarise_region
 from liverfe.regions.summary import (
     Qualifier,
     R2StarSummary,
@@ -9,6 +9,7 @@ from liverfe.regions.summary import (
     RegionSummary,
     ReportableLimits,
 )
+from liverfe.regions.value import RegionRules
 
 __all__ = [
     "Qualifier",

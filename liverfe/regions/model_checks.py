@@ -36,9 +36,7 @@ _FEWEST_ECHOES = 5
 """With fewer, leaving one out says more about the others' spacing than about itself."""
 
 
-def check_decay(
-    name: str, mask: Mask, stack: EchoStack, noise: NoiseLevel
-) -> tuple[Finding, ...]:
+def check_decay(name: str, mask: Mask, stack: EchoStack, noise: NoiseLevel) -> tuple[Finding, ...]:
     """Refuse a region whose signal rises with echo time or is cut off at a plateau.
 
     Parameters
@@ -76,9 +74,11 @@ def check_decay(
     if rise > _RISE_BETWEEN and mean[later] > floor:
         earlier = int(np.argmin(mean[: later + 1]))
         facts = {
-            "region": name, "share": f"{100 * rise:.0f}",
-            "earlier": f"{stack.echo_times_ms[earlier]:g}", "later": f"{stack.echo_times_ms[later]:g}",
-        }  # fmt: skip
+            "region": name,
+            "share": f"{100 * rise:.0f}",
+            "earlier": f"{stack.echo_times_ms[earlier]:g}",
+            "later": f"{stack.echo_times_ms[later]:g}",
+        }
         return (Finding.of("signal-not-falling", **facts),)
     return _refuse_plateau(name, signal)
 
@@ -88,9 +88,7 @@ def _refuse_plateau(name: str, signal: NDArray[np.float32]) -> tuple[Finding, ..
     plateau = float(((signal >= top).sum(axis=1) >= 2).mean())
     if plateau > _SATURATED_SHARE:
         raise StudyRefused(
-            Finding.of(
-                "saturated", region=name, share=f"{100 * plateau:.0f}", value=f"{top:.5g}"
-            )
+            Finding.of("saturated", region=name, share=f"{100 * plateau:.0f}", value=f"{top:.5g}")
         )
     return ()
 

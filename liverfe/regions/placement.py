@@ -41,7 +41,8 @@ def place(region: Region, stack: EchoStack, body: Mask) -> tuple[Mask, tuple[Fin
     Raises
     ------
     StudyRefused
-        ``region-outside-image``, ``region-not-planar``, ``region-in-hole``, ``region-outside-body``.
+        ``region-outside-image``, ``region-not-planar``, ``region-in-hole`` or
+        ``region-outside-body``.
     """
     try:
         mask = rasterise(region, stack.grid)
@@ -49,9 +50,7 @@ def place(region: Region, stack: EchoStack, body: Mask) -> tuple[Mask, tuple[Fin
         raise StudyRefused(Finding.of("region-not-planar", region=region.name)) from error
     if not mask.any():
         source = region.source or "as given"
-        raise StudyRefused(
-            Finding.of("region-outside-image", region=region.name, source=source)
-        )
+        raise StudyRefused(Finding.of("region-outside-image", region=region.name, source=source))
     _refuse_hole(region, mask, stack)
     findings = []
     if isinstance(region.shape, LabelMask) and not region.shape.grid.is_same_place_as(stack.grid):

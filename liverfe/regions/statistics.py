@@ -99,7 +99,9 @@ def correlation_inflation(values: Array, mask: NDArray[np.bool_]) -> float:
     inside = np.argwhere(mask)
     if len(inside) < 2:
         return 1.0
-    box = tuple(slice(low, high + 1) for low, high in zip(inside.min(0), inside.max(0), strict=True))
+    box = tuple(
+        slice(low, high + 1) for low, high in zip(inside.min(0), inside.max(0), strict=True)
+    )
     known = mask[box]
     deviation = np.where(known, values[box] - np.median(values[mask]), 0.0)
     variance = (deviation[known] ** 2).mean()

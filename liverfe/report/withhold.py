@@ -9,18 +9,12 @@ from __future__ import annotations
 import re
 from dataclasses import replace
 
-from liverfe.echoes import EchoStack, Subject
+from liverfe.echoes import EchoStack, naming_pattern
 from liverfe.errors import Finding
 from liverfe.study import RegionResult, StudyResult
 from liverfe.wording import REPORT
 
 __all__ = ["without_person"]
-
-_SHORTEST_WORD = 3
-"""Parts of a name shorter than this (initials, particles) name nobody when they stand alone."""
-
-_SHORTEST_NUMBER = 4
-"""A patient ID shorter than this cannot be told from a count or an echo time."""
 
 
 def without_person(result: StudyResult) -> StudyResult:
@@ -39,10 +33,12 @@ def without_person(result: StudyResult) -> StudyResult:
         patient that the files call synthetic the parts may stay: the name is nobody's.
     """
     stack = result.stack
-    terms = _terms(stack.subject, stack.acquisition.is_synthetic) if stack else []
-    if stack is None or not terms:
+    if stack is None:
         return result
-    pattern = re.compile("|".join(terms), re.IGNORECASE)
+    # Of a patient that the files call synthetic the single parts may stay: the name is nobody's.
+    pattern = naming_pattern(stack.subject, single_parts=not stack.acquisition.is_synthetic)
+    if pattern is None:
+        return result
 
     def clean(text: str) -> str:
         return pattern.sub(REPORT["withheld"], text)
@@ -89,22 +85,3 @@ def _clean_stack(stack: EchoStack, pattern: re.Pattern[str]) -> EchoStack:
         ),
     )
 
-
-def _terms(subject: Subject, is_synthetic: bool) -> list[str]:
-    """Patterns of everything that names the subject, longest first."""
-    # DICOM parts a name's components by ^ and its representations by =.
-    parts = [part for part in re.split(r"[\^=\s,]+", subject.patient_name) if part]
-    terms = [rf"{re.escape(a)}[\W_]{{1,3}}{re.escape(b)}" for a in parts for b in parts if a != b]
-    if not is_synthetic:
-        # A word of an ideographic script is shorter, yet as distinct.
-        terms += [re.escape(p) for p in parts if len(p) >= _SHORTEST_WORD - (not p.isascii())]
-    terms += [
-        re.escape(number)
-        for number in (subject.patient_id.strip(), subject.study_uid.strip())
-        if len(number) >= _SHORTEST_NUMBER
-    ]
-    if subject.birth_date is not None:
-        year, month, day = f"{subject.birth_date:%Y %m %d}".split()
-        terms += [rf"{a}[-./]?{month}[-./]?{b}" for a, b in ((year, day), (day, year))]
-    free = (rf"(?<![^\W_]){term}(?![^\W_])" for term in terms)
-    return sorted(free, key=len, reverse=True)

@@ -171,7 +171,9 @@ def _summarise(
     if len(liver) > 1 and not any(is_whole_liver(s.name) for s in liver):
         union: NDArray[np.bool_] = np.logical_or.reduce([s.mask for s in liver])
         summaries.append(
-            summarise_region(POOLED_LIVER, "liver", union, stack, noise, fit, rules, source="pooled")
+            summarise_region(
+                POOLED_LIVER, "liver", union, stack, noise, fit, rules, source="pooled"
+            )
         )
     return tuple(summaries)
 
@@ -230,5 +232,3 @@ def _in_order(findings: Sequence[Finding]) -> tuple[Finding, ...]:
     """Each finding once, gravest first, otherwise as they were raised."""
     once = list(dict.fromkeys(findings))
     return tuple(sorted(once, key=lambda finding: _ORDER[finding.level]))
-
-

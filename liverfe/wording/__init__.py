@@ -12,13 +12,12 @@ from liverfe.wording.report import REPORT, REPORT_COLUMNS, REPORT_PLURALS
 from liverfe.wording.study import ESTIMATOR_REMARKS, POOLED_LIVER
 
 __all__ = [
-    "ESTIMATOR_REMARKS",
-    "POOLED_LIVER",
-
     "CAUTION",
     "CAUTION_SHORT",
+    "ESTIMATOR_REMARKS",
     "FINDING_TABLE",
     "NOT_KNOWN",
+    "POOLED_LIVER",
     "REPORT",
     "REPORT_COLUMNS",
     "REPORT_PLURALS",

@@ -16,7 +16,6 @@ from typing import Any
 import pytest
 
 from liverfe.batch import plan_batch, run_batch
-from liverfe.batch.tasks import BatchOptions
 from liverfe.errors import UsageError
 from liverfe.export import lock_folder, verify_folder
 from liverfe.journey import Settings, resolve_settings
@@ -181,10 +180,7 @@ def test_a_batch_that_would_fill_the_disk_does_not_start(
     assert not [p for p in (tmp_path / "out").iterdir() if p.is_dir()]
 
 
-def test_options_survive_the_way_to_a_worker() -> None:
-    assert "timeout_s" in BatchOptions.__slots__
-
-
+@pytest.mark.slow
 @pytest.mark.skipif(os.name != "posix", reason="sends the signal that Ctrl-C sends")
 def test_an_interrupt_answers_at_once_and_leaves_no_half_folder(
     root: Path, tmp_path: Path, repository: Path, own_configuration: Path

@@ -93,17 +93,18 @@ def test_a_crew_keeps_its_workers_from_one_list_to_the_next() -> None:
 
 
 @pytest.mark.skipif(not hasattr(os, "fork"), reason="asks for the processes of POSIX")
-def test_workers_end_with_a_parent_that_was_killed(tmp_path: Path, repository: Path) -> None:
+def test_busy_workers_end_with_a_parent_that_was_killed(tmp_path: Path, repository: Path) -> None:
     script = tmp_path / "parent.py"
     script.write_text(
-        "import os\n"
+        "import os, threading\n"
         "from liverfe.batch.crew import Crew\n"
         "from tests.batch.jobs import work\n"
         "if __name__ == '__main__':\n"
         "    with Crew(work, n_workers=1, timeout_s=60) as crew:\n"
         "        (ending,) = crew.run([('process', None)])\n"
         "        print(ending.value, flush=True)\n"
-        "        os.kill(os.getpid(), 9)\n",
+        "        threading.Timer(1.0, os.kill, (os.getpid(), 9)).start()\n"
+        "        list(crew.run([('sleep', 600)]))\n",
         encoding="utf-8",
     )
     ran = subprocess.run(

@@ -290,6 +290,7 @@ def test_settings_are_told_with_their_origin(
     assert document["stacks"][0]["curve"]["key"] == "hernando2023_1p5"
 
 
+@pytest.mark.slow
 def test_batch_ends_with_4_where_a_study_is_refused(run_json: Run, tmp_path: Path) -> None:
     root = tmp_path / "root"
     make_coarse(root / "good", seed=3)

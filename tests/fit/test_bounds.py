@@ -61,7 +61,9 @@ def test_bound_at_high_snr_is_the_gaussian_closed_form(n: int) -> None:
 
 
 def test_bound_broadcasts_and_is_infinite_without_information() -> None:
-    found = r2star_bound_per_s(TWELVE_MS, np.array([[50.0], [500.0]]), np.array([20.0, 50.0, 1e-9]), 1.0)
+    found = r2star_bound_per_s(
+        TWELVE_MS, np.array([[50.0], [500.0]]), np.array([20.0, 50.0, 1e-9]), 1.0
+    )
     assert found.shape == (2, 3)
     assert found[0, 1] == pytest.approx(2.750, rel=6e-4)
     assert np.isinf(r2star_bound_per_s([2.0], 100.0, 50.0, 1.0))
@@ -117,7 +119,9 @@ def test_shift_is_what_refits_with_another_sigma_move(n: int, snr: float, rate: 
         fit(signal, TWELVE_MS, sigma=s, n=n).r2star_per_s.astype(float) for s in (1.01, 0.99)
     )
     moved = np.median((high - low)[np.isfinite(high - low)]) / 0.02
-    assert float(r2star_shift_per_s(TWELVE_MS, rate, snr, 1.0, n=n)) == pytest.approx(moved, rel=0.05)
+    assert float(r2star_shift_per_s(TWELVE_MS, rate, snr, 1.0, n=n)) == pytest.approx(
+        moved, rel=0.05
+    )
 
 
 def test_shift_vanishes_with_noise() -> None:

@@ -1,4 +1,4 @@
-"""What the fit says of voxels that are no decay: NaN and an outcome, never a number that looks right."""
+"""What the fit says of voxels that are no decay: an outcome, never a number that looks right."""
 
 from __future__ import annotations
 

@@ -55,7 +55,9 @@ def log_likelihood(m: Array, amplitude: Array, n: int) -> Array:
 
 
 def measured(outcome: np.ndarray) -> np.ndarray:
-    return np.flatnonzero((outcome == FitOutcome.CONVERGED) | (outcome == FitOutcome.AT_LOWER_BOUND))
+    return np.flatnonzero(
+        (outcome == FitOutcome.CONVERGED) | (outcome == FitOutcome.AT_LOWER_BOUND)
+    )
 
 
 @pytest.mark.parametrize("n", [1, 8])
@@ -84,8 +86,8 @@ def test_scipys_optimiser_finds_no_greater_rician_likelihood() -> None:
             return min(-float(stats.rice.logpdf(m, amplitude).sum()), 1e9)
 
         started = [np.log(m[0]) + 0.1, 2.0]
-        found = optimize.minimize(cost, started, method="Nelder-Mead",
-                                  options={"xatol": 1e-6, "fatol": 1e-8, "maxiter": 800})  # fmt: skip
+        options = {"xatol": 1e-6, "fatol": 1e-8, "maxiter": 800}
+        found = optimize.minimize(cost, started, method="Nelder-Mead", options=options)
         own = cost(np.array([np.log(fitted.s0[v]), 1e-2 * fitted.r2star_per_s[v]]))
         assert own < found.fun + 1e-5, v
 

@@ -131,7 +131,7 @@ def test_mean_has_no_step_where_closed_form_and_series_meet() -> None:
 
 @pytest.mark.parametrize("n", [1, 2, 8, 64])
 def test_functions_hold_at_any_amplitude(n: int) -> None:
-    # Limits: excess (n - 1/2)/a, variance 1, slope 1, information 1 - (n - 1/2)/a² (sheet 4.1, n = 1).
+    # Limits: excess (n - 1/2)/a, variance 1, slope 1, information 1 - (n - 1/2)/a² (sheet 4.1).
     a = np.array([3e4, 1e5, 1e6])
     assert signal.expected_excess(a, n) * a == pytest.approx(n - 0.5, rel=1e-3)
     assert magnitude_variance(a, n) == pytest.approx(1.0, abs=1e-5)
@@ -185,7 +185,7 @@ def test_bessel_ratio_is_as_tabulated() -> None:
 
 @pytest.mark.parametrize("n", [1, 4, 64])
 def test_bessel_functions_hold_where_the_librarys_end(n: int) -> None:
-    # Asymptotically I_n/I_(n-1) = 1 - (n - 1/2)/z and e^-z I = 1/sqrt(2 pi z) (A&S 9.7.1); near zero z/2n.
+    # I_n/I_(n-1) tends to 1 - (n - 1/2)/z, e^-z I to 1/sqrt(2 pi z) (A&S 9.7.1); near 0: z/2n.
     z = np.array([1e8, 1.1e8, 2e9, 1e12])
     assert signal.bessel_ratio(z, n) == pytest.approx(1 - (n - 0.5) / z, rel=1e-14)
     log_i = signal.log_likelihood_kernel(z, n) + (n - 1) * np.log(z)

@@ -30,9 +30,7 @@ class Abdomen:
     times_ms: Array
     body: Mask
 
-    def magnitude(
-        self, sigma: Array | float, *, n: int = 1, seed: int = 0
-    ) -> NDArray[np.float64]:
+    def magnitude(self, sigma: Array | float, *, n: int = 1, seed: int = 0) -> NDArray[np.float64]:
         """Root of the sum of squares of n channels with noise of SD sigma on real and imaginary."""
         rng = np.random.default_rng(seed)
         shape = self.amplitude.shape

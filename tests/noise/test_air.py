@@ -8,7 +8,7 @@ import pytest
 from liverfe.noise import NoiseCandidate, sigma_from_air
 from tests.noise.abdomens import SHAPE, TWELVE_MS, abdomen, stack_of
 
-# The truth is what the arrays were made with; the estimator: Constantinides 1997, methods sheet 1.5.
+# The truth is what the arrays were made with; the estimator: Constantinides 1997 (sheet 1.5).
 
 
 def is_closed(candidate: NoiseCandidate, reason: str) -> bool:
@@ -139,7 +139,7 @@ def test_a_liver_that_is_dark_in_late_echoes_does_not_disturb(rate: float, n_ech
         found = sigma_from_air(scene.stack(scene.magnitude(4.0, n=n)))
         if n_echoes == 2 and rate == 4000.0 and n == 1:
             # Its first echo, 1.8 sigma, can not be told from noise with one other echo alone.
-            assert is_closed(found, "changes with echo time")
+            assert found.sigma is None
         else:
             assert (found.n_channels, found.sigma) == (n, pytest.approx(4.0, rel=0.02))
 

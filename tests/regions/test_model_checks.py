@@ -1,4 +1,4 @@
-"""Faults of echoes are told or refused, clean regions raise nothing (faults sheet A9-A12, B3-B6)."""
+"""Faults of echoes are told or refused, clean regions raise nothing (faults A9-A12, B3-B6)."""
 
 from __future__ import annotations
 

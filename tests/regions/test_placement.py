@@ -96,9 +96,7 @@ def test_an_outline_across_slices_is_refused(scene: Scene, body: np.ndarray) -> 
     assert codes(refusal) == {"region-not-planar"}
 
 
-def test_a_region_on_a_slice_with_a_missing_echo_is_refused(
-    scene: Scene, body: np.ndarray
-) -> None:
+def test_a_region_on_a_slice_with_a_missing_echo_is_refused(scene: Scene, body: np.ndarray) -> None:
     present = np.ones((12, 2), dtype=bool)
     present[4, 1] = False
     holed = EchoStack(

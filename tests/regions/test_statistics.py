@@ -42,9 +42,7 @@ def test_the_interval_of_a_median_covers_as_often_as_it_says(n: int) -> None:
     hits = 0
     trials = 1500
     for _ in range(trials):
-        low, high = median_interval(
-            np.sort(rng.exponential(size=n)), level=0.95, inflation=1.0
-        )
+        low, high = median_interval(np.sort(rng.exponential(size=n)), level=0.95, inflation=1.0)
         hits += low <= truth <= high
     # 1500 trials leave a standard error of 0.6 %.
     assert 0.93 <= hits / trials <= 0.97

@@ -137,7 +137,10 @@ def test_spread_and_mean_are_those_of_the_used_voxels() -> None:
     scene = make_scene(200.0, snr=80.0)
     summary = summarise(scene)
     # CRLB for one voxel at S0/sigma 80 (numerical derivative of the methods sheet's closed form).
-    t, a = scene.stack.echo_times_ms * 1e-3, 80.0 * np.exp(-200.0 * scene.stack.echo_times_ms * 1e-3)
+    t, a = (
+        scene.stack.echo_times_ms * 1e-3,
+        80.0 * np.exp(-200.0 * scene.stack.echo_times_ms * 1e-3),
+    )
     information = np.array(
         [[(a**2).sum(), -(t * a**2).sum()], [-(t * a**2).sum(), (t**2 * a**2).sum()]]
     )

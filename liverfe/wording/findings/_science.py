@@ -46,8 +46,8 @@ SCIENCE_FINDINGS: dict[str, FindingWording] = {
         level="note",
         text=(
             "Background air and the residuals in tissue disagree about the noise ({air} against "
-            "{residual}); the residuals are used, and R2* of the headline region moves by less than "
-            "5 % between the two."
+            "{residual}); the residuals are used, and R2* of the headline region moves by less "
+            "than 5 % between the two."
         ),
         effect="None that matters at this R2*.",
         remedy="None needed.",
@@ -65,9 +65,9 @@ SCIENCE_FINDINGS: dict[str, FindingWording] = {
     "signal-not-falling": FindingWording(
         level="caution",
         text=(
-            "Region {region}: the signal at {later} ms is higher than at {earlier} ms, by {share} % "
-            "of the first echo. One decay cannot rise: this is fat in and out of phase, or echoes "
-            "in a wrong order."
+            "Region {region}: the signal at {later} ms is higher than at {earlier} ms, by {share} "
+            "% of the first echo. One decay cannot rise: this is fat in and out of phase, or "
+            "echoes in a wrong order."
         ),
         effect="Two swapped echoes make 15 mg/g read 8; 30 % fat makes 5 read 4.1.",
         remedy="Check the echo times against the images; use fat-suppressed or in-phase echoes.",
@@ -164,8 +164,8 @@ SCIENCE_FINDINGS: dict[str, FindingWording] = {
     "signal-too-low": FindingWording(
         level="stop",
         text=(
-            "Region {region}: S0 over sigma is {snr}; no R2* could be measured to {relative} % in a "
-            "voxel with these echoes."
+            "Region {region}: S0 over sigma is {snr}; no R2* could be measured to {relative} % in "
+            "a voxel with these echoes."
         ),
         effect="Voxels would be noise, and their median biased.",
         remedy=(
