@@ -12,7 +12,6 @@ A message says what, where, what was wanted and the remedy; it never says who.
 
 from __future__ import annotations
 
-from collections.abc import Iterable
 from dataclasses import dataclass
 
 from liverfe.wording import FINDING_TABLE, Level
@@ -110,12 +109,3 @@ class Finding:
             text=entry.text.format(**facts),
             remedy=entry.remedy.format(**facts),
         )
-
-
-def worst_level(findings: Iterable[Finding]) -> Level | None:
-    """Return the gravest level among `findings`, or None where there are none."""
-    levels = {finding.level for finding in findings}
-    for level in ("stop", "caution", "note"):
-        if level in levels:
-            return level  # type: ignore[return-value]
-    return None

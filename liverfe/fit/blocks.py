@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
 
-import numba
+from numba import config
 
 _BLOCK = 16_384
 """Rows at a time: small enough to share the work out evenly, large enough to hide the call."""
@@ -28,7 +28,8 @@ def run_in_blocks(work: Callable[[slice], None], n_rows: int) -> None:
     """
     slices = [slice(start, min(start + _BLOCK, n_rows)) for start in range(0, n_rows, _BLOCK)]
     # numba's own setting: the cores open to this process, or the variable NUMBA_NUM_THREADS.
-    n_threads = min(len(slices), numba.config.NUMBA_NUM_THREADS)
+    n_cores = int(config.NUMBA_NUM_THREADS)  # type: ignore[attr-defined]
+    n_threads = min(len(slices), n_cores)
     if n_threads <= 1:
         for rows in slices:
             work(rows)

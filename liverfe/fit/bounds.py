@@ -67,8 +67,12 @@ def r2star_shift_per_s(
 
     Parameters
     ----------
-    echo_times_ms, r2star_per_s, s0, sigma, n
-        As in `r2star_bound_per_s`.
+    echo_times_ms : array_like, shape (E,)
+        Echo times in ms.
+    r2star_per_s, s0, sigma : array_like
+        R2* in 1/s, signal at echo time zero and noise SD per channel (signal units); broadcast.
+    n : int
+        Effective number of channels.
 
     Returns
     -------
@@ -161,9 +165,25 @@ def upper_limit_per_s(
     n: int = 1,
     sigma_relative_sd: float = 0.0,
 ) -> float:
-    """Upper reportable R2* in 1/s for a voxel of this S0 and sigma; NaN where there is none.
+    """Upper reportable R2* for a voxel of this S0 and sigma.
 
-    See `reportable_range` for the arguments.
+    Parameters
+    ----------
+    echo_times_ms : array_like, shape (E,)
+        Echo times in ms, at least two.
+    s0, sigma : float
+        Signal at echo time zero and noise SD per channel, signal units.
+    relative : float
+        Share of R2* that the standard error may reach.
+    n : int
+        Effective number of channels.
+    sigma_relative_sd : float
+        Standard error of sigma as a share of it.
+
+    Returns
+    -------
+    float
+        In 1/s; NaN where the share is reached nowhere (`reportable_range`).
     """
     found = reportable_range(
         echo_times_ms, s0 / sigma, relative=relative, n=n, sigma_relative_sd=sigma_relative_sd

@@ -82,10 +82,28 @@ def fit_rows(
     *,
     estimator: str = "rician-ml",
 ) -> DecayRows:
-    """Fit a list of voxels; arguments as in `liverfe.fit.rician.fit_rician_ml`.
+    """Fit a list of voxels.
 
     For the estimators that give no standard error of their own, the Cramér-Rao bound at their fit
     stands in: their true scatter is not smaller.
+
+    Parameters
+    ----------
+    signal : ndarray of float32, shape (V, E)
+        Magnitudes, signal units.
+    echo_times_ms : ndarray of float64, shape (E,)
+        Echo times in ms.
+    sigma : ndarray of float64, shape (1,) or (V,)
+        Noise SD per channel, signal units.
+    n : int
+        Effective number of channels.
+    estimator : str
+        One of `ESTIMATORS`.
+
+    Returns
+    -------
+    DecayRows
+        One row a voxel.
     """
     if estimator == "rician-ml":
         return fit_rician_ml(signal, echo_times_ms, sigma, n)

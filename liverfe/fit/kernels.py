@@ -11,6 +11,10 @@ from __future__ import annotations
 
 import numpy as np
 from numba import njit
+from numpy.typing import NDArray
+
+Array = NDArray[np.float64]
+Array32 = NDArray[np.float32]
 
 NOT_FITTED, CONVERGED, AT_LOWER_BOUND, AT_UPPER_BOUND, NOT_CONVERGED, NO_SIGNAL = range(6)
 
@@ -26,17 +30,21 @@ _UNRESOLVED = 1.0
 
 
 @njit(cache=True, inline="always")
-def _look_up(table, u):
+def _look_up(table: Array, u: float) -> float:
     x = u * len(table)
     i = int(x)
     if i >= len(table):
         i = len(table) - 1
     t = x - i
-    return table[i, 0] + t * (table[i, 1] + t * (table[i, 2] + t * table[i, 3]))
+    value: float = table[i, 0] + t * (table[i, 1] + t * (table[i, 2] + t * table[i, 3]))
+    return value
 
 
 @njit(cache=True)
-def _log_likelihood(m, times, log_s0, rate, n, kernel, product_scale, amplitudes):
+def _log_likelihood(
+    m: Array, times: Array, log_s0: float, rate: float, n: int, kernel: Array,
+    product_scale: float, amplitudes: Array,
+) -> float:  # fmt: skip
     """Log-likelihood up to terms in the data alone; leaves the amplitudes behind."""
     total = 0.0
     for e in range(len(times)):
@@ -49,7 +57,7 @@ def _log_likelihood(m, times, log_s0, rate, n, kernel, product_scale, amplitudes
 
 
 @njit(cache=True)
-def _start(m, times, n):
+def _start(m: Array, times: Array, n: int) -> tuple[float, float]:
     """Weighted log-linear fit of the leading echoes above the noise, noise power taken off."""
     s_w = s_t = s_tt = s_y = s_ty = 0.0
     used = 0
@@ -78,8 +86,9 @@ def _start(m, times, n):
 
 @njit(cache=True)
 def _score_and_information(
-    m, times, amplitudes, ratio, information, product_scale, amplitude_scale, out
-):
+    m: Array, times: Array, amplitudes: Array, ratio: Array, information: Array,
+    product_scale: float, amplitude_scale: float, out: Array,
+) -> None:  # fmt: skip
     """Score and Fisher information in (ln S0, R2*): out = [s0, s1, f00, f01, f11]."""
     out[:] = 0.0
     for e in range(len(times)):
@@ -96,7 +105,7 @@ def _score_and_information(
 
 
 @njit(cache=True)
-def _chi2(m, amplitudes, n, excess, amplitude_scale):
+def _chi2(m: Array, amplitudes: Array, n: int, excess: Array, amplitude_scale: float) -> float:
     total = 0.0
     for e in range(len(m)):
         a = amplitudes[e]
@@ -107,9 +116,10 @@ def _chi2(m, amplitudes, n, excess, amplitude_scale):
 
 @njit(cache=True)
 def _climb(
-    m, times, max_rate, n, ratio, kernel, information, product_scale, amplitude_scale, amplitudes,
-    trial, work,
-):  # fmt: skip
+    m: Array, times: Array, max_rate: float, n: int, ratio: Array, kernel: Array,
+    information: Array, product_scale: float, amplitude_scale: float, amplitudes: Array,
+    trial: Array, work: Array,
+) -> tuple[float, float, int]:  # fmt: skip
     """Fisher scoring with step halving; returns ln S0, R2* and the outcome."""
     log_s0, rate = _start(m, times, n)
     rate = min(rate, max_rate)
@@ -172,10 +182,13 @@ def _climb(
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def fit_maximum_likelihood(
-    signal, times, sigma, n, max_rate, no_signal_power, no_signal_first,
-    ratio, kernel, excess, information, product_scale, amplitude_scale,
-    rate_out, s0_out, se_out, chi2_out, outcome_out,
-):  # fmt: skip
+    signal: Array32, times: Array, sigma: Array, n: int, max_rate: float,
+    no_signal_power: float, no_signal_first: float,
+    ratio: Array, kernel: Array, excess: Array, information: Array,
+    product_scale: float, amplitude_scale: float,
+    rate_out: Array32, s0_out: Array32, se_out: Array32, chi2_out: Array32,
+    outcome_out: NDArray[np.uint8],
+) -> None:  # fmt: skip
     """Fit each row of `signal`; see `liverfe.fit.rician` for what the arguments mean."""
     n_voxels, n_echoes = signal.shape
     m, amplitudes, trial = np.empty(n_echoes), np.empty(n_echoes), np.empty(n_echoes)

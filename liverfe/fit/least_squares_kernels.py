@@ -9,8 +9,12 @@ from __future__ import annotations
 
 import numpy as np
 from numba import njit
+from numpy.typing import NDArray
 
 from liverfe.fit.kernels import AT_LOWER_BOUND, AT_UPPER_BOUND, CONVERGED, NOT_CONVERGED, NOT_FITTED
+
+Array = NDArray[np.float64]
+Array32 = NDArray[np.float32]
 
 _GRID = 48
 _GOLDEN = 0.6180339887498949
@@ -18,7 +22,9 @@ _MAX_STEPS = 60
 
 
 @njit(cache=True)
-def _projected(m, times, used, rate, with_offset, linear):
+def _projected(
+    m: Array, times: Array, used: int, rate: float, with_offset: bool, linear: Array
+) -> float:
     """Residual sum of squares at `rate`, S0 (and offset) being the best; fills `linear`."""
     see = se = sme = sm = smm = 0.0
     for e in range(used):
@@ -37,14 +43,19 @@ def _projected(m, times, used, rate, with_offset, linear):
         if linear[1] < 0.0:  # a noise floor cannot be negative
             linear[0] = sme / see
             linear[1] = 0.0
-        return smm - linear[0] * sme - linear[1] * sm
+        rest: float = smm - linear[0] * sme - linear[1] * sm
+        return rest
     linear[0] = sme / see
     linear[1] = 0.0
-    return smm - linear[0] * sme
+    plain: float = smm - linear[0] * sme
+    return plain
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
-def fit_projected(signal, times, used, max_rate, with_offset, rate_out, s0_out, outcome_out):
+def fit_projected(
+    signal: Array32, times: Array, used: NDArray[np.int64], max_rate: float, with_offset: bool,
+    rate_out: Array32, s0_out: Array32, outcome_out: NDArray[np.uint8],
+) -> None:  # fmt: skip
     """Least squares of ``S0 exp(-R t) (+ C)`` on the first `used` echoes of each row."""
     n_voxels, n_echoes = signal.shape
     m = np.empty(n_echoes)
@@ -94,7 +105,9 @@ def fit_projected(signal, times, used, max_rate, with_offset, rate_out, s0_out, 
 
 
 @njit(cache=True)
-def _moment(a, order, n, excess, amplitude_scale):
+def _moment(
+    a: float, order: int, n: int, excess: Array, amplitude_scale: float
+) -> tuple[float, float]:
     """Expected first or second moment at amplitude `a`, and its derivative; sigma = 1."""
     if order == 2:
         return a * a + 2.0 * n, 2.0 * a
@@ -108,7 +121,10 @@ def _moment(a, order, n, excess, amplitude_scale):
 
 
 @njit(cache=True)
-def _moment_cost(y, times, log_s0, rate, order, n, excess, amplitude_scale):
+def _moment_cost(
+    y: Array, times: Array, log_s0: float, rate: float, order: int, n: int, excess: Array,
+    amplitude_scale: float,
+) -> float:  # fmt: skip
     cost = 0.0
     for e in range(len(times)):
         mean, _ = _moment(np.exp(log_s0 - rate * times[e]), order, n, excess, amplitude_scale)
@@ -118,9 +134,10 @@ def _moment_cost(y, times, log_s0, rate, order, n, excess, amplitude_scale):
 
 @njit(cache=True, nogil=True, error_model="numpy")
 def fit_moments(
-    signal, times, sigma, n, order, max_rate, start_rate, start_s0, excess, amplitude_scale,
-    rate_out, s0_out, outcome_out,
-):  # fmt: skip
+    signal: Array32, times: Array, sigma: float, n: int, order: int, max_rate: float,
+    start_rate: Array32, start_s0: Array32, excess: Array, amplitude_scale: float,
+    rate_out: Array32, s0_out: Array32, outcome_out: NDArray[np.uint8],
+) -> None:  # fmt: skip
     """Least squares of M (order 1) or M² (order 2) on its expectation."""
     n_voxels, n_echoes = signal.shape
     y = np.empty(n_echoes)

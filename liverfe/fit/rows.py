@@ -10,7 +10,15 @@ from numpy.typing import NDArray
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
 class DecayRows:
-    """Fits of V voxels; fields as in `DecayFit`, each of shape (V,)."""
+    """Fits of V voxels.
+
+    Attributes
+    ----------
+    r2star_per_s, s0, r2star_se_per_s, reduced_chi2 : ndarray of float32, shape (V,)
+        As in `DecayFit`.
+    outcome : ndarray of uint8, shape (V,)
+        A `FitOutcome` each.
+    """
 
     r2star_per_s: NDArray[np.float32]
     s0: NDArray[np.float32]

@@ -46,6 +46,16 @@ def noise_floor(n: int = 1) -> float:
     r"""Expected magnitude where there is no signal, in sigma.
 
     :math:`\beta_n = \sqrt{2}\,\Gamma(n+1/2)/\Gamma(n)`; 1.2533 for n = 1 (Constantinides 1997).
+
+    Parameters
+    ----------
+    n : int
+        Effective number of channels.
+
+    Returns
+    -------
+    float
+        The floor, in sigma.
     """
     return float(np.sqrt(2.0) * np.exp(special.gammaln(n + 0.5) - special.gammaln(n)))
 
@@ -81,11 +91,24 @@ def expected_excess(a: ArrayLike, n: int = 1) -> Array:
     series = (1.0 + (1.0 + (3.0 + 37.5 / large**2) / (2.0 * large**2)) / (4.0 * large**2)) / (
         2.0 * large
     )
-    return np.where(a < _SERIES_FROM, closed - small, series)
+    return np.asarray(np.where(a < _SERIES_FROM, closed - small, series))
 
 
 def expected_magnitude(a: ArrayLike, n: int = 1) -> Array:
-    """Expected magnitude ``E[m]`` at amplitude `a`, in sigma; see `expected_excess`."""
+    """Expected magnitude ``E[m]`` at amplitude `a`, in sigma.
+
+    Parameters
+    ----------
+    a : array_like
+        Amplitude in sigma, at least 0.
+    n : int
+        Effective number of channels.
+
+    Returns
+    -------
+    ndarray of float64
+        `expected_excess` plus the amplitude.
+    """
     return np.asarray(a, dtype=np.float64) + expected_excess(a, n)
 
 
@@ -93,6 +116,18 @@ def magnitude_variance(a: ArrayLike, n: int = 1) -> Array:
     r"""Variance of the magnitude, in sigma²: :math:`\xi = 2n + a^2 - E[m]^2` (Koay 2006).
 
     Written through the excess d = E[m] - a as ``2n - d² - 2ad``, which does not cancel.
+
+    Parameters
+    ----------
+    a : array_like
+        Amplitude in sigma, at least 0.
+    n : int
+        Effective number of channels.
+
+    Returns
+    -------
+    ndarray of float64
+        Variance, from ``2n - beta_n²`` in noise alone up to 1.
     """
     a = np.asarray(a, dtype=np.float64)
     d = expected_excess(a, n)
@@ -140,7 +175,7 @@ def log_likelihood_kernel(z: ArrayLike, n: int = 1) -> Array:
     series = at_zero + np.log1p(z**2 / (4.0 * n) * (1 + z**2 / (8.0 * (n + 1)))) - z
     safe = np.where(usable, z, 1.0)
     exact = np.log(np.where(usable, scaled, 1.0)) - order * np.log(safe)
-    return np.where(usable, exact, series)
+    return np.asarray(np.where(usable, exact, series))
 
 
 def information(a: ArrayLike, n: int = 1) -> Array:

@@ -127,6 +127,6 @@ def _limits(
     if not known.any():
         return np.full(len(snr), np.nan)
     # Below the first point there is no limit: an S0 of zero lies there too.
-    return np.interp(
-        np.log(np.maximum(snr, 0.5 * points[0])), np.log(points[known]), limits[known], left=np.nan, right=limits[known][-1]
-    )
+    at = np.log(np.maximum(snr, 0.5 * points[0]))
+    reached = np.interp(at, np.log(points[known]), limits[known], left=np.nan)
+    return np.asarray(reached)

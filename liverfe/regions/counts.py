@@ -40,9 +40,7 @@ def sort_voxels(mask: Mask, fit: DecayFit, limit: float) -> VoxelCounts:
     )
 
 
-def censored_sample(
-    fit: DecayFit, measured: Mask, counts: VoxelCounts
-) -> NDArray[np.float64]:
+def censored_sample(fit: DecayFit, measured: Mask, counts: VoxelCounts) -> NDArray[np.float64]:
     """All voxels that say something, ascending, censored ones at infinity."""
     values = np.sort(fit.r2star_per_s[measured].astype(np.float64))
     under, over = int(counts.under.sum()), int(counts.over.sum())

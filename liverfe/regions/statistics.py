@@ -77,7 +77,7 @@ def outliers(values: Array, mads: float) -> NDArray[np.bool_]:
     return np.asarray(far & np.isfinite(values))
 
 
-def correlation_inflation(values: Array, mask: NDArray[np.bool_]) -> float:
+def correlation_inflation(values: NDArray[np.floating], mask: NDArray[np.bool_]) -> float:
     """How many voxels count as one, from the correlation of in-plane neighbours.
 
     Interpolated images repeat the same noise in neighbouring voxels; a region's interval from the

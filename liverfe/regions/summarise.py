@@ -47,14 +47,20 @@ def summarise_region(
 
     Parameters
     ----------
-    name, organ, source : str
+    name, organ : str
         As in `Region`.
     mask : ndarray of bool, shape (X, Y, Z)
         Its voxels, at least one.
-    stack, noise, fit
-        Images, noise and fits.
+    stack : EchoStack
+        The images.
+    noise : NoiseLevel
+        Their noise.
+    fit : DecayFit
+        Their fits.
     rules : RegionRules
         Choices of the method.
+    source : str
+        As in `Region`.
     findings : tuple of Finding
         What is known of the region already.
 

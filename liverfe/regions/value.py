@@ -29,7 +29,21 @@ _MEDIAN_OVER_MEAN_SE = 1.2533
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class RegionRules:
-    """Choices of the method that a region's summary depends on; see `liverfe.study.Method`."""
+    """Choices of the method that a region's summary depends on.
+
+    Attributes
+    ----------
+    voxel_relative_se : float
+        Share of R2* that one voxel's standard error may reach at the upper limit.
+    trim : {'none', 'mad'}
+        Rule for outliers.
+    trim_mads : float
+        How many scaled MADs from the median an outlier lies.
+    interval : float
+        Level of the interval.
+    censored_share : float
+        With at least this share of voxels over the limit the region is.
+    """
 
     voxel_relative_se: float = 0.10
     trim: str = "mad"

@@ -82,7 +82,7 @@ def assess_study(
             maps, fit, stack, mask=summary.mask, over_limit=summary.over_limit,
             measured=summary.used,
         )  # fmt: skip
-    results = tuple(_with_iron(s, curve, method, stack) for s in summaries)
+    results = tuple(_with_iron(s, curve, method) for s in summaries)
     headline = _headline(summaries)
     findings = (
         *stack.findings,
@@ -189,16 +189,13 @@ def _with_iron(
     summary: RegionSummary,
     curve: CalibrationCurve | None,
     method: Method,
-    stack: EchoStack,
 ) -> RegionResult:
     if curve is None or summary.organ != "liver":
         return RegionResult(summary=summary, iron=None)
     return RegionResult(
         summary=summary,
         iron=estimate_iron(summary, curve, method.bands),
-        other_curves=other_estimates(
-            summary, curve, method.bands, stack.acquisition.field_strength_t
-        ),
+        other_curves=other_estimates(summary, curve, method.bands, curve.field_strength_t),
     )
 
 

@@ -44,7 +44,7 @@ FAULTS = {
     "docstrings": ("liverfe/units.py", SOUND.replace("    number : float", "    count : float")),
     "dead-code": ("liverfe/units.py", SOUND + "\n\ndef _left_behind() -> None:\n    pass\n"),
     "dependencies": ("liverfe/errors.py", "import undeclared\n"),
-    "examples": ("liverfe/units.py", SOUND.replace("    1.5", "    1.6")),
+    "examples": ("liverfe/units.py", SOUND.replace("    1.5", "    1.625")),
     "documents": ("docs/index.md", "# Small\n\nSee [a page](missing.md).\n"),
 }
 

@@ -79,10 +79,10 @@ def test_a_killed_worker_costs_nobody_else_anything(tmp_path: Path) -> None:
 
 def test_a_study_that_hangs_is_given_up_and_the_rest_goes_on() -> None:
     started = time.monotonic()
-    ended = run([("sleep", 600), ("double", 4)], n_workers=1, timeout_s=1.0)
+    ended = run([("sleep", 30), ("double", 4)], n_workers=1, timeout_s=1.0)
     assert ended[0].kind == "timeout"
     assert ended[1].value == 8
-    assert time.monotonic() - started < 120
+    assert time.monotonic() - started < 29
 
 
 def test_a_crew_keeps_its_workers_from_one_list_to_the_next() -> None:
