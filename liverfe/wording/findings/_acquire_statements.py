@@ -75,7 +75,7 @@ STATEMENT_FINDINGS: dict[str, FindingWording] = {
             "LIC at will."
         ),
         remedy=(
-            "Export the images again with {tag}, or state the echo times with --echo-times- ms."
+            "Export the images again with {tag}, or state the echo times with --echo-times-ms."
         ),
     ),
     "echo-times-out-of-range": FindingWording(
@@ -119,7 +119,7 @@ STATEMENT_FINDINGS: dict[str, FindingWording] = {
             "no decay is left and LIC comes out as none."
         ),
         remedy=(
-            "Export the images with their own echo times, or state them with --echo-times- ms."
+            "Export the images with their own echo times, or state them with --echo-times-ms."
         ),
     ),
     "echo-times-given": FindingWording(
