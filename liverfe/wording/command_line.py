@@ -106,7 +106,7 @@ INCOMPLETE = "{n_images} of {n_images_expected} images; missing ones are dots, o
 RANGE_R2STAR = "R2* {low:.0f} to {high:.0f} 1/s"
 RANGE_NONE = "nothing within the stated precision"
 RANGE_LIC = "LIC {low} to {high} mg/g"
-N_FILES = "{what}: {n} files, {why}"
+N_FILES = "{what}: {n_files} files, {why}"
 ONE_FILE = "{what}: 1 file, {why}"
 
 # ------------------------------------------------------------------------------------------- run
@@ -138,7 +138,8 @@ BATCH_MORE = "... and {n} more in the summary."
 BATCH_ROW = "{key}: {outcome}: {reason}"
 BATCH_ROW_CLEAN = "{key}: {outcome}"
 BATCH_SUMMARY_AT = "Summary: {path}"
-BATCH_LAST = "{total} rows: {counts}."
+BATCH_LAST = "{total} rows: {counts}{before}."
+BATCH_DONE_BEFORE = "; {n} were done before"
 BATCH_COUNT = "{n} {outcome}"
 BATCH_NOTHING = "no study was found under ROOT; give the folder that holds the studies."
 BATCH_WAITING = "not measured yet; run the same command again to go on"

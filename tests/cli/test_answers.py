@@ -303,3 +303,14 @@ def test_batch_ends_with_4_where_a_study_is_refused(run_json: Run, tmp_path: Pat
     assert status == 4
     assert [row["outcome"] for row in document["rows"]].count("refused") == 1
     assert run_json(*call, "--dry-run")[0] == 0
+
+
+def test_inspect_says_on_the_screen_what_was_left_out_and_why(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    made = make_coarse(tmp_path / "study", layout="with-phase")
+    assert main(["inspect", str(made.folder / "images")]) == 0
+    said = " ".join(capsys.readouterr().out.split())
+    # 12 echoes of 4 slices: as many phase images as magnitude images.
+    assert "48 files" in said
+    assert "phase" in said
