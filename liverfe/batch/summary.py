@@ -10,7 +10,13 @@ from typing import Any
 
 from liverfe.export import SUMMARY_COLUMNS, summary_csv
 from liverfe.wording import CAUTION
-from liverfe.wording.command_line import BATCH_COUNT, BATCH_LAST, BATCH_ROW, BATCH_ROW_CLEAN
+from liverfe.wording.command_line import (
+    BATCH_COUNT,
+    BATCH_DONE_BEFORE,
+    BATCH_LAST,
+    BATCH_ROW,
+    BATCH_ROW_CLEAN,
+)
 
 SUMMARY_NAME = "summary.csv"
 
@@ -70,14 +76,15 @@ def told_row(row: Row) -> str:
     return BATCH_ROW.format(key=row["key"], outcome=standing(row), reason=row["reason"])
 
 
-def told_counts(rows: Iterable[Row]) -> str:
-    """Tell how many rows there are of each standing."""
+def told_counts(rows: Iterable[Row], n_done_before: int) -> str:
+    """Tell how many rows there are of each standing, and how many were done before."""
     listed = list(rows)
     counts = Counter(standing(row) for row in listed)
     shown = [
         BATCH_COUNT.format(n=counts[word], outcome=word) for word in _WORST_FIRST if counts[word]
     ]
-    return BATCH_LAST.format(total=len(listed), counts=", ".join(shown))
+    before = BATCH_DONE_BEFORE.format(n=n_done_before) if n_done_before else ""
+    return BATCH_LAST.format(total=len(listed), counts=", ".join(shown), before=before)
 
 
 def write_summary(out: Path, rows: Iterable[Row]) -> Path:

@@ -89,18 +89,21 @@ def run_batch(
         try:
             with make_crew(options) as crew:
                 discovery = discover(root, options, crew=crew, listener=heard)
-                rows = _measure_all(discovery, options, crew, heard)
+                rows, n_done_before = _measure_all(discovery, options, crew, heard)
         finally:
             # Workers are gone by now; what one of them left half-written goes too.
             remove_leftovers(out)
         place = write_summary(out, rows.values())
-    return _document(rows, place)
+    return _document(rows, place, n_done_before)
 
 
 def _measure_all(
     discovery: Discovery, options: BatchOptions, crew: Crew, listener: BatchListener
-) -> dict[str, Row]:
-    """Measure all studies; the rows stand in the summary from the start, waiting."""
+) -> tuple[dict[str, Row], int]:
+    """Measure all studies; the rows stand in the summary from the start, waiting.
+
+    Gives the rows by key, and how many were done before.
+    """
     tasks = _tasks(discovery, options)
     rows = {t.key: plain_row(t.key, t.patient_key, WAITING, BATCH_WAITING) for t in tasks}
     for place, ending in discovery.lost:
@@ -111,11 +114,14 @@ def _measure_all(
     _refuse_without_room(discovery, options)
     write_summary(options.out, rows.values())
     written = Stopwatch()
+    done_before: list[str] = []
     listener.step("batch", 0, len(tasks))
     for n_done, ending in enumerate(crew.run(tasks), start=1):
         task = tasks[ending.index]
         if ending.kind == "done":
             row = ending.value["row"]
+            if ending.value["was_done"]:
+                done_before.append(task.key)
         else:
             row = plain_row(task.key, task.patient_key, FAILED, reason_of(ending, options))
         rows[task.key] = row
@@ -124,7 +130,7 @@ def _measure_all(
         if written.left_of(_SUMMARY_EVERY_S) <= 0:
             write_summary(options.out, rows.values())
             written = Stopwatch()
-    return rows
+    return rows, len(done_before)
 
 
 def _tasks(discovery: Discovery, options: BatchOptions) -> list[StudyTask]:
@@ -162,14 +168,15 @@ def _refuse_without_room(discovery: Discovery, options: BatchOptions) -> None:
         )
 
 
-def _document(rows: dict[str, Row], summary: Path) -> dict[str, Any]:
+def _document(rows: dict[str, Row], summary: Path, n_done_before: int) -> dict[str, Any]:
     listed = worst_first(rows.values())
     bad = [row for row in listed if row["outcome"] != "reported"]
     return {
         "schema": 1,
         "rows": sorted(listed, key=lambda row: row["key"]),
         "to_look_at": [told_row(row) for row in listed if standing(row) != "reported"],
+        "n_done_before": n_done_before,
         "summary_csv": str(summary),
-        "summary": told_counts(listed),
+        "summary": told_counts(listed, n_done_before),
         "exit_status": 4 if bad else 0,
     }

@@ -23,7 +23,6 @@ from liverfe.wording import command_help as words
 from liverfe.wording.command_line import INTERRUPTED
 
 STATUS_DONE = 0
-STATUS_USAGE = 2
 STATUS_INTERRUPTED = 130
 
 _NAME = "liverfe"

@@ -130,7 +130,8 @@ def remove_leftovers(out: Path) -> None:
     out : Path
         The folder of result folders. What a living run is writing there stays.
     """
-    pattern = re.compile(r"\.(.+)\.[0-9a-f]{16}\.part")
+    # A lock of a run that was killed holds nobody up, and goes with the rest.
+    pattern = re.compile(r"\.(.+?)\.(?:[0-9a-f]{16}\.part|lock)")
     names = {match[1] for path in out.iterdir() if (match := pattern.fullmatch(path.name))}
     for name in sorted(names):
         with suppress(UsageError), lock_folder(out / name) as folder:

@@ -23,10 +23,6 @@ class Stopwatch:
         """Seconds until `limit_s` have passed; 0 when they have."""
         return max(0.0, limit_s - self.seconds)
 
-    def expected_left(self, done: int, total: int) -> float | None:
-        """Seconds that the rest will take at the pace so far; None before anything is done."""
-        return self.seconds / done * (total - done) if done else None
-
 
 def told_duration(seconds: float) -> str:
     """Tell a duration in the unit that suits it."""

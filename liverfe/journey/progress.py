@@ -24,4 +24,12 @@ class Progress(Protocol):
 
 
 def no_progress(step: str, done: int, total: int) -> None:
-    """Listen to nothing."""
+    """Listen to nothing.
+
+    Parameters
+    ----------
+    step : str
+        Passed over.
+    done, total : int
+        Passed over.
+    """

@@ -139,7 +139,20 @@ def resolve_settings(
 
 
 def nearest(word: str, known: list[str]) -> str:
-    """Give a sentence that proposes the nearest spelling, or nothing."""
+    """Give a sentence that proposes the nearest spelling.
+
+    Parameters
+    ----------
+    word : str
+        As it was typed.
+    known : list of str
+        What there is.
+
+    Returns
+    -------
+    str
+        With a space before it; empty where nothing is near.
+    """
     close = difflib.get_close_matches(word, known, n=1, cutoff=0.5)
     return DID_YOU_MEAN.format(word=close[0]) if close else ""
 

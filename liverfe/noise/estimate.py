@@ -5,6 +5,7 @@ from __future__ import annotations
 from liverfe.echoes import EchoStack
 from liverfe.errors import Finding, StudyRefused
 from liverfe.noise.air import sigma_from_air
+from liverfe.noise.ceiling import sigma_ceiling
 from liverfe.noise.level import NoiseCandidate, NoiseLevel
 from liverfe.noise.residual import sigma_from_residuals
 
@@ -28,7 +29,8 @@ def estimate_noise(
     Both ways are always tried. Where they agree within 10 % air is taken, being the more precise;
     where they differ the residuals are taken, because they come from tissue and the air may be
     filtered, scaled or from another part of a parallel reconstruction. Only air can tell the
-    number of channels.
+    number of channels. Where neither is open, an upper bound of sigma stands in (`sigma_ceiling`):
+    limits then come out low, and `liverfe.study` refuses what the bound could move.
 
     Parameters
     ----------
@@ -63,24 +65,34 @@ def estimate_noise(
     residual = sigma_from_residuals(
         stack, start_sigma=air.sigma, n_channels=n_channels or air.n_channels
     )
+    tried = [air, residual]
     chosen = _choose(method, air, residual)
     findings = []
+    if chosen is None and method == "auto":
+        ceiling = sigma_ceiling(stack)
+        tried.append(ceiling)
+        if ceiling.sigma is not None:
+            chosen = ceiling
+            findings.append(Finding.of("noise-ceiling", reasons=_reasons(air, residual)))
+    if chosen is None:
+        raise StudyRefused(Finding.of("noise-unknown", reasons=_reasons(*tried)))
     if air.echo_scale_trend_per_s > _SCALE_TREND_PER_S:
         shift = f"{air.echo_scale_trend_per_s:.0f}"
         findings.append(Finding.of("echo-scale-differs", shift=shift))
     if air.sigma is None and n_channels is None:
         findings.append(Finding.of("channels-not-tested"))
-    return _level(chosen, (air, residual), tuple(findings))
+    return _level(chosen, tuple(tried), tuple(findings))
 
 
-def _choose(method: str, air: NoiseCandidate, residual: NoiseCandidate) -> NoiseCandidate:
+def _reasons(*closed: NoiseCandidate) -> str:
+    return "; ".join(f"{candidate.method}: {candidate.remark}" for candidate in closed)
+
+
+def _choose(method: str, air: NoiseCandidate, residual: NoiseCandidate) -> NoiseCandidate | None:
     wanted = {"air": (air,), "residual": (residual,), "auto": (air, residual)}[method]
     usable = [candidate for candidate in wanted if candidate.sigma is not None]
-    if not usable:
-        reasons = "; ".join(f"{candidate.method}: {candidate.remark}" for candidate in wanted)
-        raise StudyRefused(Finding.of("noise-unknown", reasons=reasons))
-    if len(usable) == 1:
-        return usable[0]
+    if len(usable) < 2:
+        return usable[0] if usable else None
     assert air.sigma is not None
     assert residual.sigma is not None
     agree = abs(residual.sigma / air.sigma - 1.0) <= _AGREE

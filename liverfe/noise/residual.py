@@ -62,7 +62,7 @@ def sigma_from_residuals(
     """
     if stack.n_echoes < _FEWEST_ECHOES:
         return _closed("two echoes leave no residual")
-    square = _bright_triplets(stack)
+    square = bright_triplets(stack)
     if square.shape[1] < _ENOUGH_VOXELS:
         return _closed("too few voxels with high signal")
     sigma = start_sigma or float(np.sqrt(np.median(square[..., 0]))) / 50.0
@@ -99,7 +99,7 @@ def sigma_from_residuals(
     )
 
 
-def _bright_triplets(stack: EchoStack) -> Array:
+def bright_triplets(stack: EchoStack) -> Array:
     """Squares of two partners and the voxel between, all bright; shape (3, V, E), middle second."""
     volume = stack.magnitude[:, :, stack.complete_slices]
     finite = np.isfinite(volume).all(axis=-1)

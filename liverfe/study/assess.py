@@ -24,7 +24,7 @@ from liverfe.noise import NoiseLevel, estimate_noise
 from liverfe.outlines import Region, is_whole_liver
 from liverfe.regions import RegionRules, RegionSummary, body_mask, place, summarise_region
 from liverfe.study.method import Method
-from liverfe.study.noise_doubts import noise_findings
+from liverfe.study.noise_doubts import noise_findings, refuse_unbounded
 from liverfe.study.result import RegionResult, StudyResult
 from liverfe.wording import ESTIMATOR_REMARKS, POOLED_LIVER
 
@@ -77,6 +77,7 @@ def assess_study(
     fit = fit_r2star(stack, noise, estimator=method.estimator)
     maps = judge(fit, stack, noise, voxel_relative_se=method.voxel_relative_se)
     summaries = _summarise(stack, regions, method, noise, fit)
+    refuse_unbounded(summaries, stack, noise)
     for summary in summaries:
         maps = repaint(
             maps, fit, stack, mask=summary.mask, over_limit=summary.over_limit,

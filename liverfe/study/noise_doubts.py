@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 
 from liverfe.echoes import EchoStack
-from liverfe.errors import Finding
+from liverfe.errors import Finding, StudyRefused
 from liverfe.fit import fit_rows
 from liverfe.noise import NoiseLevel
 from liverfe.regions import RegionSummary
@@ -16,6 +18,8 @@ _OTHER_CHANNELS = 8
 """What is tried where the number of channels is unknown: a middling sum of squares."""
 _AGREE = 0.10
 """Sigmas within this share of each other agree, as in `liverfe.noise`."""
+_NEXT_TO_NONE = 0.05
+"""Share of a bounded sigma that stands for no noise at all."""
 _MOST_VOXELS = 4000
 
 
@@ -62,6 +66,34 @@ def noise_findings(
                 )
             )  # fmt: skip
     return tuple(found)
+
+
+def refuse_unbounded(
+    summaries: Sequence[RegionSummary], stack: EchoStack, noise: NoiseLevel
+) -> None:
+    """Refuse a study whose sigma is only bounded from above, where the bound could move a value.
+
+    Parameters
+    ----------
+    summaries : sequence of RegionSummary
+        All regions; one over its limit is over it for any smaller sigma's limit as stated.
+    stack, noise
+        Images and the noise level that was used.
+
+    Raises
+    ------
+    StudyRefused
+        ``noise-unknown``, if a measured R2* would be 5 % different without noise.
+    """
+    if noise.method != "ceiling":
+        return
+    for summary in summaries:
+        if summary.r2star.qualifier != "=" or summary.organ == "background":
+            continue
+        shift = _shift(summary, stack, noise, sigma=_NEXT_TO_NONE * noise.sigma, n=noise.n_channels)
+        if abs(shift) > _MATTERS:
+            reasons = "; ".join(f"{c.method}: {c.remark}" for c in noise.candidates)
+            raise StudyRefused(Finding.of("noise-unknown", reasons=reasons))
 
 
 def _shift(

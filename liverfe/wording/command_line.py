@@ -16,7 +16,6 @@ ORIGIN_ENVIRONMENT = "environment {name}"
 ORIGIN_PROJECT_FILE = "project file {path}"
 ORIGIN_USER_FILE = "user file {path}"
 ORIGIN_DEFAULT = "default"
-ORIGIN_METHOD_FILE = "method file"
 
 DID_YOU_MEAN = " Did you mean {word!r}?"
 
@@ -50,7 +49,6 @@ SECRET_DAMAGED = (
 
 INPUT_MISSING = "input {name!r} does not exist; check the path."
 REGIONS_MISSING = "region file {name!r} does not exist; check the path."
-OUT_NOT_WRITABLE = "the output folder {path} cannot be written: {reason}"
 STACK_UNKNOWN = "there is no usable stack {number}; {count} found: see liverfe inspect."
 ECHO_TIMES_UNREADABLE = (
     "--echo-times-ms {text!r}: wanted are numbers in ms, comma-separated, such as 1.1,2.0,2.9"
@@ -65,7 +63,6 @@ RECIPE_UNKNOWN = (
     "own ends in .toml."
 )
 
-USAGE_ERROR = "{message}"
 USAGE_HINT = "See {command} --help."
 
 FAULT = (

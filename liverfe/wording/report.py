@@ -163,8 +163,9 @@ REPORT: dict[str, str] = {
     "channels_one": "1 channel (Rician)",
     "channels_many": "{count} effective channels",
     "noise_air": "background air",
-    "noise_residual": "residuals of the fit",
+    "noise_residual": "residuals in tissue",
     "noise_given": "the method file",
+    "noise_ceiling": "an upper bound only: nothing measures it",
     "trim_none": "no voxel trimmed",
     "trim_mad": (
         "voxels further than {mads} scaled median absolute deviations from the median trimmed"

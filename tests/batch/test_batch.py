@@ -122,6 +122,8 @@ def test_running_again_measures_nothing_again(
     shutil.rmtree(out / victim / "maps")
     again = run_batch(root, out, settings=settings)
     assert again["rows"] == first["rows"]
+    # Four stacks were measured; the damaged one is not taken as done.
+    assert (first["n_done_before"], again["n_done_before"]) == (0, 3)
     assert {name: (out / name).stat().st_mtime_ns for name in stamps} == stamps
     # What was damaged is made anew, and the damaged one is kept aside.
     assert (out / victim / "maps").is_dir()

@@ -107,21 +107,28 @@ def test_busy_workers_end_with_a_parent_that_was_killed(tmp_path: Path, reposito
         "        list(crew.run([('sleep', 600)]))\n",
         encoding="utf-8",
     )
-    ran = subprocess.run(
+    with subprocess.Popen(
         [sys.executable, str(script)],
         env={**os.environ, "PYTHONPATH": str(repository)},
         stdout=subprocess.PIPE,
-        check=False,
-    )
-    worker = int(ran.stdout)
-    deadline = time.monotonic() + 20
-    while time.monotonic() < deadline:
-        try:
-            os.kill(worker, 0)
-        except ProcessLookupError:
-            return
-        state = Path(f"/proc/{worker}/stat")
-        if state.exists() and state.read_text(encoding="ascii").split()[2] == "Z":
-            return  # it has ended, and nobody has asked for its status yet
-        time.sleep(0.1)
-    pytest.fail(f"worker {worker} outlived its parent")
+    ) as parent:
+        assert parent.stdout is not None
+        worker = int(parent.stdout.readline())
+        parent.wait(timeout=60)
+        deadline = time.monotonic() + 15
+        while _is_alive(worker):
+            if time.monotonic() > deadline:
+                os.kill(worker, 9)
+                pytest.fail("the worker outlived its parent")
+            time.sleep(0.1)
+
+
+def _is_alive(process: int) -> bool:
+    state = Path(f"/proc/{process}/stat")
+    if state.exists() and state.read_text(encoding="ascii").split()[2] == "Z":
+        return False  # it has ended, and nobody has asked for its status yet
+    try:
+        os.kill(process, 0)
+    except ProcessLookupError:
+        return False
+    return True

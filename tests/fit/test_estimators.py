@@ -5,7 +5,7 @@ from __future__ import annotations
 import lmfit
 import numpy as np
 import pytest
-from scipy import special, stats
+from scipy import optimize, special, stats
 
 from liverfe.fit import FitOutcome
 from tests.fit.decays import SIGMA_ONE, TWELVE_MS, Array, decay, fit, magnitudes
@@ -198,6 +198,22 @@ def test_least_squares_cannot_be_trapped() -> None:
         best = ((m**2).sum() - (shape @ m) ** 2 / (shape**2).sum(axis=1)).min()
         own = ((m - decay(fitted.s0[v], fitted.r2star_per_s[v], TWELVE_MS)[0]) ** 2).sum()
         assert own <= best * (1 + 1e-6), v
+
+
+def test_the_offset_fit_cannot_be_trapped() -> None:
+    # A fine grid of rates with S0 and a constant of at least zero solved for at each.
+    rng = np.random.default_rng(16)
+    signal = magnitudes(decay(rng.uniform(3, 60, 40), rng.uniform(20, 2500, 40), TWELVE_MS), rng)
+    fitted = fit(signal, TWELVE_MS, estimator="offset")
+    for v in np.flatnonzero(np.isfinite(fitted.r2star_per_s)):
+        m = signal[v].astype(float)
+
+        def cost(rate: float, m: Array = m) -> float:
+            shape = np.exp(-1e-3 * rate * TWELVE_MS)
+            return optimize.nnls(np.column_stack([shape, np.ones(12)]), m)[1] ** 2
+
+        best = min(cost(rate) for rate in np.geomspace(5.0, 11_900, 250))
+        assert cost(float(fitted.r2star_per_s[v])) <= best * (1 + 1e-6), v
 
 
 def test_log_linear_is_numpys_straight_line() -> None:

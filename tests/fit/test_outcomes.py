@@ -67,6 +67,14 @@ def test_a_decay_that_is_gone_at_the_second_echo_is_never_read_as_slow() -> None
     assert (slow > 2000).all()
 
 
+def test_one_echo_above_the_noise_is_a_decay_and_no_absence() -> None:
+    # 5 sigma in noise has a chance of exp(-12.5), 4e-6 (Rayleigh); the twelve echoes together are
+    # quite likely noise (chi-square of 24 degrees: 40.8, one in 60).
+    fitted = fit([5.0] + [1.2] * 11, TWELVE_MS)
+    assert fitted.outcome[0] not in (FitOutcome.NO_SIGNAL, FitOutcome.NOT_FITTED)
+    assert fit([4.0] + [1.2] * 11, TWELVE_MS).outcome[0] == FitOutcome.NO_SIGNAL
+
+
 def test_slow_decays_are_never_said_to_be_over_the_limit() -> None:
     rng = np.random.default_rng(33)
     for snr in (10.0, 30.0):

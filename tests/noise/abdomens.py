@@ -56,11 +56,13 @@ def abdomen(
     in_air: bool = True,
     fast_share: float = 0.0,
     liver_fat: float = 0.0,
+    fat_layer: bool = False,
     shape: tuple[int, int, int] = SHAPE,
 ) -> Abdomen:
     """An ellipse of tissue with a disc of liver; S0 undulates by 20 % as coils make it.
 
-    `fast_share` of each voxel decays four times as fast; `liver_fat` is the liver's fat fraction.
+    `fast_share` of each voxel decays four times as fast; `liver_fat` is the liver's fat fraction;
+    `fat_layer` makes the rim of the body fat, twice as bright.
     """
     x = np.linspace(-1, 1, shape[0])[:, None, None]
     y = np.linspace(-1, 1, shape[1])[None, :, None]
@@ -72,7 +74,8 @@ def abdomen(
     curve = (1 - fast_share) * np.exp(-rate * t) + fast_share * np.exp(-4 * rate * t)
     turns = _FAT_PPM * _HZ_PER_PPM_AT_1P5_T * t[:, None]
     fat = (_FAT_SHARE * np.exp(2j * np.pi * turns)).sum(axis=1)
-    share = np.where(liver, liver_fat, 0.0)[..., None]
-    size = s0 * (1 + 0.2 * np.sin(7 * x + 5 * y + np.arange(shape[2]))) * body
+    rim = body & (x**2 + (y / 0.8) ** 2 + z > 0.38) & fat_layer
+    share = np.where(rim, 0.95, np.where(liver, liver_fat, 0.0))[..., None]
+    size = s0 * (1 + 0.2 * np.sin(7 * x + 5 * y + np.arange(shape[2]))) * body * (1 + rim)
     amplitude = size[..., None] * np.abs(1 - share + share * fat) * curve
     return Abdomen(amplitude=amplitude, times_ms=np.asarray(times_ms, float), body=body)

@@ -57,6 +57,13 @@ def test_liver_fat_does_not_pass_for_noise(fat: float, times: np.ndarray) -> Non
     assert share(scene.magnitude(8.0), scene.times_ms, 8.0) == pytest.approx(1.0, abs=0.08)
 
 
+@pytest.mark.parametrize("times", [[4.6, 9.2, 13.8], [1.2, 2.4, 3.6, 4.8, 6.0, 7.2]])
+def test_a_layer_of_bright_fat_does_not_pass_for_noise(times: list[float]) -> None:
+    # Pairs of voxels across its border differ by more than noise: they are left out.
+    scene = abdomen(fat_layer=True, times_ms=np.array(times))
+    assert share(scene.magnitude(8.0), scene.times_ms, 8.0) == pytest.approx(1.0, abs=0.06)
+
+
 @pytest.mark.parametrize("factor", [2, 4])
 def test_interpolated_images_keep_their_sigma(factor: int) -> None:
     # Zero-filling: the Fourier transform is padded, noise of neighbours is then correlated.

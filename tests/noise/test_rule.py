@@ -72,13 +72,16 @@ def test_a_given_sigma_is_taken_as_given() -> None:
         estimate_noise(SCENE.stack(PLAIN), method="given")
 
 
-def test_no_way_open_is_refused_with_both_reasons() -> None:
+def test_no_way_open_leaves_a_bound_and_tells_both_reasons() -> None:
     scene = abdomen(in_air=False, times_ms=np.array([2.3, 4.6]))
-    with pytest.raises(StudyRefused) as refused:
-        estimate_noise(scene.stack(scene.magnitude(8.0)))
-    assert refused.value.findings[0].code == "noise-unknown"
-    assert "air: " in str(refused.value)
-    assert "residual: two echoes" in str(refused.value)
+    noise = estimate_noise(scene.stack(scene.magnitude(8.0)))
+    assert noise.method == "ceiling"
+    # A bound: never below the truth by more than the scatter of its estimate.
+    assert noise.sigma > 0.95 * 8.0
+    told = next(finding for finding in noise.findings if finding.code == "noise-ceiling")
+    assert told.level == "caution"
+    assert "air: " in told.text
+    assert "residual: two echoes" in told.text
 
 
 def test_a_forced_way_that_is_closed_is_refused() -> None:
@@ -123,10 +126,10 @@ def test_sigma_does_not_hang_on_the_order_of_slices_or_the_way_round() -> None:
         assert estimate_noise(SCENE.stack(view)).sigma == pytest.approx(one.sigma, rel=2e-3)
 
 
-@pytest.mark.parametrize("n_slices", [1, 3, 10])
+@pytest.mark.parametrize("n_slices", [1, 3, 20])
 def test_any_number_of_slices_does(n_slices: int) -> None:
     # Voxels are thinned where there are many: no slice may be left out by a common factor.
-    scene = abdomen(shape=(160, 150, n_slices))
+    scene = abdomen(shape=(160, 150, n_slices), times_ms=np.array([1.2, 2.4, 3.6]))
     sigma = 4.0 * np.where(np.arange(n_slices) % 2 == 0, 1.0, 1.1)[:, None]
     noise = estimate_noise(scene.stack(scene.magnitude(sigma)))
     power = float(np.sqrt((sigma**2).mean()))

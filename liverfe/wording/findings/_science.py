@@ -15,6 +15,16 @@ SCIENCE_FINDINGS: dict[str, FindingWording] = {
             "method file (noise = 'given')."
         ),
     ),
+    "noise-ceiling": FindingWording(
+        level="caution",
+        text=(
+            "The noise of these images cannot be measured ({reasons}). An upper bound stands in, "
+            "from the scatter of decays within one tissue: the limits of this scan come out low, "
+            "and R2* would move by less than 5 % without any noise."
+        ),
+        effect="None that matters at this R2*; intervals and limits are cautious.",
+        remedy="Acquire more echoes, and keep the background in the images.",
+    ),
     "channels-not-tested": FindingWording(
         level="note",
         text=(
