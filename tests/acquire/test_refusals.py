@@ -331,3 +331,15 @@ def test_every_finding_that_reading_can_raise_has_its_words(repository: Path) ->
     }
     assert len(raised) > 40
     assert raised <= set(FINDING_TABLE)
+
+
+def test_a_component_that_contradicts_the_image_type_is_not_believed(tmp_path: Path) -> None:
+    """ImageType says phase, (0008,9208) says magnitude: one of the two lies."""
+
+    def contradict(dataset: Dataset, echo: int, k: int) -> None:
+        dataset.ImageType = ["ORIGINAL", "PRIMARY", "P", "ND"]
+        dataset.ComplexImageComponent = "MAGNITUDE"
+
+    (plan,) = plans_of(made.write_study(tmp_path, change=contradict))
+    doubts = {finding.level for finding in (*plan.findings, *filter(None, [plan.refusal]))}
+    assert doubts & {"caution", "stop"}

@@ -95,14 +95,22 @@ def is_derived(image_type: tuple[str, ...]) -> bool:
 
 
 def _component(elements: Elements, tokens: list[str], component: str) -> Kind:
+    named = _named(tokens)
     if component.upper() in _STANDARD:
-        return _STANDARD[component.upper()]
+        standard = _STANDARD[component.upper()]
+        # Where component and image type contradict each other neither is believed.
+        return "unknown" if named not in ("unknown", standard) else standard
     ge = private(elements, 0x0043, 0x2F, tags.GE_PARAMETERS)
     if ge is not None and (code := whole(elements, ge, binary="SS")) in _GE:
         return _GE[code]
     philips = private(elements, 0x2005, 0x11, tags.PHILIPS)
     if philips is not None and (letter := text(elements, philips).upper()) in _LETTERS:
         return _LETTERS[letter]
+    return named
+
+
+def _named(tokens: list[str]) -> Kind:
+    """The kind that a token of the image type names."""
     for token in tokens[2:]:
         if token in _WORDS:
             return _WORDS[token]
