@@ -66,4 +66,3 @@ def region_names_withheld(names: Iterable[str], stack: EchoStack | None) -> dict
             candidate = f"{clean} {number}"
         leaving[name] = candidate
     return leaving
-

@@ -84,4 +84,3 @@ def _clean_stack(stack: EchoStack, pattern: re.Pattern[str]) -> EchoStack:
             for left in stack.left_out
         ),
     )
-

@@ -118,9 +118,7 @@ STATEMENT_FINDINGS: dict[str, FindingWording] = {
             "Some scanners write the shortest echo time into every echo: taken at its word, "
             "no decay is left and LIC comes out as none."
         ),
-        remedy=(
-            "Export the images with their own echo times, or state them with --echo-times-ms."
-        ),
+        remedy=("Export the images with their own echo times, or state them with --echo-times-ms."),
     ),
     "echo-times-given": FindingWording(
         level="note",
