@@ -16,8 +16,11 @@ import subprocess
 
 import environment
 
-FAST = ["-m", "not slow and not bench", "tests"]
-"""The core: no long studies, no benchmark, no examples in documents."""
+CORE = (
+    "units grid errors sources outlines echoes noise fit maps regions calibration study acquire"
+).split()
+FAST = ["-m", "not slow and not bench", *(f"tests/{room}" for room in CORE)]
+"""The core: reading and the science, without whole studies, reports and commands."""
 
 
 def main(arguments: list[str]) -> int:

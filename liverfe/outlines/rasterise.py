@@ -9,8 +9,9 @@ from skimage.draw import polygon2mask
 from liverfe.grid import Grid
 from liverfe.outlines.region import LabelMask, Outline, Region
 
-_IN_PLANE_TOLERANCE = 0.5
-"""A corner may lie this many slices off the plane of its outline; more, and it is not planar."""
+_IN_PLANE_TOLERANCE = 0.25
+"""A corner may lie this many slices off the plane of its outline; more, and it is not planar. The
+plane itself belongs to the slice that it lies nearest to."""
 
 
 def rasterise(region: Region, grid: Grid) -> NDArray[np.bool_]:

@@ -77,7 +77,7 @@ def write_dicom(
         # The second run's chance follows from the recipe's seed, as everything in a file does.
         runs.append(scan_again(phantom, np.random.default_rng([phantom.recipe.seed, 1])))
     syntax = TRANSFER_SYNTAXES[transfer_syntax]
-    uid_layout = f"{layout} {transfer_syntax}"
+    uid_layout = _uid_layout(layout, transfer_syntax)
     dataset = describe_study(phantom, layout=uid_layout, transfer_syntax=syntax)
     paths = []
     for frame, path in _plan(phantom, folder, layout):
@@ -87,6 +87,16 @@ def write_dicom(
         dataset.save_as(path, enforce_file_format=True)
         paths.append(path)
     return sorted(paths)
+
+
+def frame_of_reference_uid(phantom: Phantom, *, layout: str, transfer_syntax: str) -> str:
+    """Name the frame of reference (0020,0052) that `write_dicom` gives these images."""
+    return phantom.uid(_uid_layout(layout, transfer_syntax), "frame of reference")
+
+
+def _uid_layout(layout: str, transfer_syntax: str) -> str:
+    """One object in two layouts is two studies: their UIDs differ."""
+    return f"{layout} {transfer_syntax}"
 
 
 def _plan(phantom: Phantom, folder: Path, layout: str) -> Iterator[tuple[Frame, Path]]:

@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 
 from liverfe.errors import UsageError
-from liverfe.phantom.dicom import DICOM_LAYOUTS, write_dicom
+from liverfe.phantom.dicom import DICOM_LAYOUTS, frame_of_reference_uid, write_dicom
 from liverfe.phantom.library import load_recipe
 from liverfe.phantom.make import make_phantom
 from liverfe.phantom.nifti import NIFTI_LAYOUTS, write_nifti
@@ -134,9 +134,11 @@ def _write(
     images = folder / "images"
     if format == "dicom":
         files = write_dicom(phantom, images, layout=layout, transfer_syntax=transfer_syntax)
+        frame = frame_of_reference_uid(phantom, layout=layout, transfer_syntax=transfer_syntax)
     else:
         files = write_nifti(phantom, images, layout=layout)
-    write_regions(phantom, folder / "regions")
+        frame = ""
+    write_regions(phantom, folder / "regions", frame_of_reference_uid=frame)
     truth = write_truth(phantom, folder / "truth", made={"format": format, "layout": layout})
     return len(files), truth
 

@@ -131,7 +131,9 @@ def write_truth(phantom: Phantom, folder: Path, *, made: dict[str, Any]) -> dict
     return document
 
 
-def write_regions(phantom: Phantom, folder: Path) -> tuple[Path, Path]:
+def write_regions(
+    phantom: Phantom, folder: Path, *, frame_of_reference_uid: str = ""
+) -> tuple[Path, Path]:
     """Write the regions, as a label image with its table and as an outline file.
 
     Parameters
@@ -140,6 +142,8 @@ def write_regions(phantom: Phantom, folder: Path) -> tuple[Path, Path]:
         Any.
     folder : Path
         Made if it is not there.
+    frame_of_reference_uid : str
+        Of the DICOM images that the outlines belong to; empty for NIfTI, which has none.
 
     Returns
     -------
@@ -153,6 +157,8 @@ def write_regions(phantom: Phantom, folder: Path) -> tuple[Path, Path]:
     names = tuple(plan.name for plan in phantom.recipe.regions)
     _write_label_table(folder / "phantom_regions.tsv", names)
     document = outline_document(phantom.recipe, phantom.regions, phantom.grid)
+    if frame_of_reference_uid:
+        document["frame_of_reference_uid"] = frame_of_reference_uid
     write_json(outlines, document, indent=None)
     return labels, outlines
 

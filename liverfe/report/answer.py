@@ -106,7 +106,17 @@ def _lic(iron: IronEstimate, result: StudyResult) -> dict[str, str | None]:
             high=shown(high, "lic_mg_per_g"),
         ),
         "censored": {">": REPORT["over_limit"], "<": REPORT["under_limit"]}.get(iron.qualifier),
+        "curve": _curve_line(result),
     }
+
+
+def _curve_line(result: StudyResult) -> str:
+    """Name the curve beside its number, and how far its equation is known."""
+    curve = result.curve
+    if curve is None:
+        return ""
+    line = REPORT["curve_line"].format(key=curve.key, field=f"{curve.field_strength_t:g}")
+    return f"{line}: {REPORT[f'evidence_{curve.evidence}']}"
 
 
 def _why_no_lic(result: StudyResult) -> str:

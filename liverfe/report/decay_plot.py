@@ -71,7 +71,7 @@ def draw_decay(decay: RegionDecay, *, is_limit: bool) -> str:
         axes.plot(
             [], [], color=ACCENT, lw=1.4, label=REPORT["plot_limit" if is_limit else "plot_fit"]
         )
-        axes.legend(frameon=False, loc="upper right", fontsize=7.5, handlelength=1.6)
+        axes.legend(frameon=False, loc="best", fontsize=7.5, handlelength=1.6)
 
     return draw_svg(_SIZE_IN, draw)
 

@@ -195,6 +195,7 @@ REPORT: dict[str, str] = {
         "{estimator}. A fit model is part of a calibration: where the two differ, LIC carries a "
         "difference that the interval does not cover."
     ),
+    "curve_line": "curve {key}, {field} T",
     "evidence_abstract": "equation read in the paper's own abstract or page",
     "evidence_secondary": "equation as quoted elsewhere, not checked against the paper",
     "evidence_memory": "equation not checked against a source",

@@ -196,7 +196,7 @@ SCIENCE_FINDINGS: dict[str, FindingWording] = {
             "(R2* over {limit} /s). {consequence}"
         ),
         effect="A fitted number beyond the limit may read anything.",
-        remedy="Repeat with shorter first echo and echo spacing, or at 1.5 T.",
+        remedy="Repeat with a shorter first echo and echo spacing, or at a lower field.",
     ),
     "censored-under-limit": FindingWording(
         level="caution",
