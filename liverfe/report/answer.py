@@ -93,8 +93,11 @@ def _lic(iron: IronEstimate, result: StudyResult) -> dict[str, str | None]:
         wording = "interval_none"
     elif high is None:
         wording = "interval_from"
+    elif low is None:
+        wording = "interval_to"
     else:
-        wording = "interval_to" if low is None else "interval"
+        same = shown(low, "lic_mg_per_g") == shown(high, "lic_mg_per_g")
+        wording = "interval_narrow" if same else "interval"
     return {
         "value": qualified(iron.value_mg_per_g, "lic_mg_per_g", iron.qualifier),
         "umol": REPORT["umol"].format(
@@ -219,7 +222,9 @@ def key_facts(result: StudyResult) -> list[list[str]]:
             ],
             [
                 REPORT["voxels_used"],
-                REPORT["used_of"].format(used=summary.n_used, total=summary.n_voxels),
+                REPORT["used_and_over" if summary.n_over_limit else "used_of"].format(
+                    used=summary.n_used, total=summary.n_voxels, over=summary.n_over_limit
+                ),
             ],
             [
                 REPORT["measurable"],
