@@ -60,6 +60,9 @@ def read_label_image(path: Path) -> tuple[Region, ...]:
     if found[0] < 0 or len(found) > _MOST_LABELS:
         raise _invalid(path, "its values", "whole numbers from 0 to a few hundred are wanted")
     names = read_label_names(path)
+    if file.disagreement_mm:
+        apart = f"qform and sform place it {file.disagreement_mm:.1f} mm apart"
+        raise _invalid(path, "its place in the patient", f"one place is wanted: {apart}")
     grid = Grid(shape=file.shape[:3], affine_mm=file.affine_mm)
     regions = []
     for label in found:

@@ -79,6 +79,10 @@ def estimate_noise(
     if air.echo_scale_trend_per_s > _SCALE_TREND_PER_S:
         shift = f"{air.echo_scale_trend_per_s:.0f}"
         findings.append(Finding.of("echo-scale-differs", shift=shift))
+    if air.added_constant > 0.0:
+        findings.append(Finding.of("background-offset", constant=f"{air.added_constant:.3g}"))
+    if air.is_clipped:
+        findings.append(Finding.of("background-clipped"))
     if air.sigma is None and n_channels is None:
         findings.append(Finding.of("channels-not-tested"))
     return _level(chosen, tuple(tried), tuple(findings))

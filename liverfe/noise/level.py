@@ -31,6 +31,10 @@ class NoiseCandidate:
     echo_scale_trend_per_s : float
         How fast the noise grows with echo time, 1/s: anything but zero says that the echoes are
         scaled differently.
+    added_constant : float
+        The constant that the background seems to stand on, signal units; 0 where on none.
+    is_clipped : bool
+        Whether single values of the background were set to zero, as after a subtraction.
     """
 
     method: str
@@ -40,6 +44,8 @@ class NoiseCandidate:
     n_voxels: int
     remark: str
     echo_scale_trend_per_s: float = 0.0
+    added_constant: float = 0.0
+    is_clipped: bool = False
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)

@@ -7,7 +7,7 @@ import pytest
 
 from liverfe.errors import StudyRefused
 from liverfe.study import ESTIMATORS, Method, StudyResult, assess_study, refused_result
-from tests.scenes import S0, Scene, make_scene
+from tests.scenes import ORGAN_VOXELS, S0, Scene, make_scene
 
 
 def assess(scene: Scene, *names: str, **choices: object) -> StudyResult:
@@ -182,3 +182,35 @@ def test_the_result_is_the_same_to_the_bit_when_made_again() -> None:
     assert two.maps is not None
     assert one.maps.r2star_per_s.tobytes() == two.maps.r2star_per_s.tobytes()
     assert one.regions[0].iron == two.regions[0].iron
+
+
+@pytest.mark.parametrize("constant", [0.7, 2.0, 6.0])
+def test_a_constant_added_to_the_images_is_told(constant: float) -> None:
+    """Fault B13, in sigmas of 1.67: it mimics noise of several channels but for its skewness."""
+    scene = make_scene(380.0, snr=60.0)
+    m = np.array(scene.stack.magnitude) + constant * S0 / 60.0
+    result = assess(scene.with_magnitude(m))
+    assert {"background-offset", "poor-fit", "noise-disagrees"} & codes(result, "caution")
+
+
+@pytest.mark.parametrize("constant", [1.0, 2.0])
+def test_a_constant_subtracted_and_cut_off_is_told(constant: float) -> None:
+    """Fault B14."""
+    scene = make_scene(150.0, snr=60.0)
+    m = np.maximum(np.array(scene.stack.magnitude) - constant * S0 / 60.0, 0.0)
+    assert codes(assess(scene.with_magnitude(m)), "caution")
+
+
+@pytest.mark.parametrize("n_channels", [2, 4, 8, 32])
+def test_sums_of_squares_are_no_constant(n_channels: int) -> None:
+    result = assess(make_scene(200.0, snr=60.0, n_channels=n_channels))
+    assert not result.has_caution
+
+
+@pytest.mark.parametrize("share", [0.35, 0.4, 0.45])
+def test_two_kinds_of_tissue_are_told(share: float) -> None:
+    """Vessels in so many voxels that none is an outlier: the median would fall in silence."""
+    rates = np.full(ORGAN_VOXELS, 300.0)
+    rates[: int(share * ORGAN_VOXELS)] = 10.0
+    result = assess(make_scene(rates, snr=60.0))
+    assert {"uneven-iron", "many-trimmed"} & codes(result, "caution")

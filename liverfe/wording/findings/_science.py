@@ -103,6 +103,34 @@ SCIENCE_FINDINGS: dict[str, FindingWording] = {
             "tags of each echo."
         ),
     ),
+    "background-offset": FindingWording(
+        level="caution",
+        text=(
+            "The background is not noise alone: it looks like noise on top of a constant of about "
+            "{constant}. A constant added to the images makes every R2* too low."
+        ),
+        effect="With 100 added to the stored values 5 mg/g reads 2.9, and 15 reads 3.4.",
+        remedy="Check RescaleIntercept (0028,1052); export the images as they were acquired.",
+    ),
+    "background-clipped": FindingWording(
+        level="caution",
+        text=(
+            "Single values of the background are exactly zero, others are not: a threshold, or a "
+            "constant subtracted from the images and cut off at zero, which makes every R2* too "
+            "high."
+        ),
+        effect="With the noise floor subtracted 15 mg/g reads 18.",
+        remedy="Check RescaleIntercept (0028,1052); export the images without a threshold.",
+    ),
+    "uneven-iron": FindingWording(
+        level="caution",
+        text=(
+            "Region {region}: R2* differs much between its voxels (a tenth below {low} /s, a tenth "
+            "above {high} /s, median {median} /s): two kinds of tissue, or many vessels."
+        ),
+        effect="With 70 % of a liver at 5 mg/g and 30 % at 25 the median says 5.3, the mean 11.",
+        remedy="Look at the map; report the parts as regions of their own, without vessels.",
+    ),
     "signal-negative": FindingWording(
         level="stop",
         text=(
