@@ -5,6 +5,7 @@
 """
 
 from liverfe.fit.bounds import (
+    best_measured,
     r2star_bound_per_s,
     r2star_shift_per_s,
     reportable_range,
@@ -21,6 +22,7 @@ __all__ = [
     "DecayRows",
     "FitOutcome",
     "amplitude",
+    "best_measured",
     "expected_magnitude",
     "fit_r2star",
     "fit_rows",

@@ -156,6 +156,35 @@ def reportable_range(
     return float(low), float(high)
 
 
+def best_measured(
+    echo_times_ms: ArrayLike, snr: float, *, n: int = 1, sigma_relative_sd: float = 0.0
+) -> tuple[float, float]:
+    """R2* that one voxel measures best, and its relative standard error there.
+
+    Parameters
+    ----------
+    echo_times_ms : array_like, shape (E,)
+        Echo times in ms, at least two.
+    snr : float
+        S0 over sigma.
+    n : int
+        Effective number of channels.
+    sigma_relative_sd : float
+        Standard error of sigma as a share of it.
+
+    Returns
+    -------
+    r2star_per_s, relative : float
+        In 1/s, and as a share of it.
+    """
+    times = np.asarray(echo_times_ms, dtype=np.float64)
+    top = 1e3 * _SEARCH_RATE_TIMES_FIRST_ECHO / times[0]
+    rates = np.geomspace(_SEARCH_LOW_PER_S, top, _SEARCH_POINTS)
+    share = relative_se(times, rates, snr, 1.0, n=n, sigma_relative_sd=sigma_relative_sd)
+    best = int(np.argmin(share))
+    return float(rates[best]), float(share[best])
+
+
 def upper_limit_per_s(
     echo_times_ms: ArrayLike,
     s0: float,

@@ -82,16 +82,20 @@ def choose_stack(
         return StackChoice(
             plan=None,
             plans=usable,
-            label=label_of(survey, usable[0], secret),
+            label=label_of(survey, usable[0], secret, inputs=inputs),
             findings=(Finding.of("several-stacks", count=len(usable), stacks=listed),),
         )
     if number is not None and number > len(usable):
         raise UsageError(STACK_UNKNOWN.format(number=number, count=len(usable)))
     plan = usable[(number or 1) - 1]
-    return StackChoice(plan=plan, plans=(plan,), label=label_of(survey, plan, secret), findings=())
+    return StackChoice(
+        plan=plan, plans=(plan,), label=label_of(survey, plan, secret, inputs=inputs), findings=()
+    )
 
 
-def label_of(survey: Survey, plan: StackPlan, secret: bytes) -> StudyLabel:
+def label_of(
+    survey: Survey, plan: StackPlan, secret: bytes, *, inputs: Sequence[Path]
+) -> StudyLabel:
     """Give the keys of a plan.
 
     Parameters
@@ -102,6 +106,8 @@ def label_of(survey: Survey, plan: StackPlan, secret: bytes) -> StudyLabel:
         One of its stacks.
     secret : bytes
         For the keys.
+    inputs : sequence of Path
+        What was surveyed: its path stands for a study whose files name none.
 
     Returns
     -------
@@ -110,7 +116,7 @@ def label_of(survey: Survey, plan: StackPlan, secret: bytes) -> StudyLabel:
     """
     of_this_study = [p for p in survey.usable if p.subject.study_uid == plan.subject.study_uid]
     position = next((i for i, p in enumerate(of_this_study, start=1) if p is plan), 1)
-    key = key_of(plan.subject.study_uid, secret)
+    key = key_of(plan.subject.study_uid or str(inputs[0].resolve()), secret)
     return StudyLabel(
         key=key if position == 1 else f"{key}-{position}",
         patient_key=key_of(plan.subject.patient_id, secret),

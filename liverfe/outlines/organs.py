@@ -6,17 +6,23 @@ Regions count as liver unless their name says another organ or tissue: those get
 from __future__ import annotations
 
 import re
+import unicodedata
 
 _ORGAN_WORDS: dict[str, tuple[str, ...]] = {
-    "spleen": ("spleen", "splenic"),
-    "muscle": ("muscle", "paraspinal", "psoas", "erector"),
+    "spleen": ("spleen", "splenic", "milz", "rate", "bazo", "milza"),
+    "muscle": (
+        "muscle", "paraspinal", "psoas", "erector", "muskel", "muskulatur", "musculo", "muscolo",
+    ),
     "vessel": (
         "vessel", "vein", "artery", "arteries", "aorta", "vena", "portal", "cava", "ivc", "blood",
+        "gefass", "gefasse", "gefaess", "vene", "vaisseau", "vaisseaux", "vaso", "vasi",
     ),
-    "fat": ("fat", "adipose", "subcutaneous"),
-    "kidney": ("kidney", "renal", "cortex", "medulla"),
-    "pancreas": ("pancreas", "pancreatic"),
-    "heart": ("heart", "myocardium", "septum", "cardiac"),
+    "fat": ("fat", "adipose", "subcutaneous", "fett", "graisse", "grasa", "grasso"),
+    "kidney": ("kidney", "renal", "cortex", "medulla", "niere", "nieren", "rein", "rinon", "rene"),
+    "pancreas": (
+        "pancreas", "pancreatic", "pankreas", "bauchspeicheldruse", "bauchspeicheldruese",
+    ),
+    "heart": ("heart", "myocardium", "septum", "cardiac", "herz", "coeur", "cuore", "corazon"),
     "marrow": ("marrow", "vertebra", "vertebrae", "vertebral", "bone", "spine"),
     "gallbladder": ("gallbladder", "gall", "bile"),
     "lung": ("lung",),
@@ -24,10 +30,10 @@ _ORGAN_WORDS: dict[str, tuple[str, ...]] = {
         "lesion", "cyst", "tumour", "tumor", "haemangioma", "hemangioma", "metastasis",
         "metastases", "hcc", "abscess",
     ),
-    "background": ("background", "air", "noise"),
+    "background": ("background", "air", "noise", "hintergrund", "luft", "fond", "fondo", "aire"),
     "phantom": ("vial", "tube", "phantom"),
 }  # fmt: skip
-"""Plurals with s are understood."""
+"""English, with plurals in s, and the plain words of German, French, Italian and Spanish."""
 
 _WITHOUT = ("without", "minus", "excluding", "excl", "except", "avoiding", "avoid", "sparing", "no")
 """What follows these is what the region leaves out."""
@@ -48,7 +54,7 @@ def organ_from_name(name: str) -> str:
         vessel; ``liver without vessels`` is liver, since what follows *without* is left out; ``not
         liver`` is ``other``.
     """
-    words = re.split(r"[^a-z]+", name.lower().replace("w/o", "without"))
+    words = re.split(r"[^a-z]+", _plain(name).replace("w/o", "without"))
     for stop in _WITHOUT:
         if stop in words:
             words = words[: words.index(stop)]
@@ -57,7 +63,13 @@ def organ_from_name(name: str) -> str:
     return "other" if organ == "liver" and told & {"non", "not"} else organ
 
 
+def _plain(name: str) -> str:
+    """Lower case without accents: ``Gefäß`` reads ``gefass``."""
+    parted = unicodedata.normalize("NFKD", name.lower().replace("ß", "ss"))
+    return "".join(char for char in parted if not unicodedata.combining(char))
+
+
 def is_whole_liver(name: str) -> bool:
     """Tell whether a region's name says that it is the liver as a whole."""
-    words = [word for word in re.split(r"[^a-z]+", name.lower()) if word]
+    words = [word for word in re.split(r"[^a-z]+", _plain(name)) if word]
     return words in (["liver"], ["whole", "liver"])

@@ -7,7 +7,7 @@ from numpy.typing import NDArray
 
 from liverfe.echoes import EchoStack
 from liverfe.errors import Finding, StudyRefused
-from liverfe.fit import DecayFit, FitOutcome, upper_limit_per_s
+from liverfe.fit import DecayFit, FitOutcome, best_measured, upper_limit_per_s
 from liverfe.noise import NoiseLevel
 
 Mask = NDArray[np.bool_]
@@ -16,6 +16,9 @@ _OWN_SHARE = 0.5
 """A region speaks for its own S0 if this share of its voxels has one."""
 _DARKER_QUARTER = 25.0
 """Percentile of the other tissue's S0 that stands in: a low S0 makes a low, safe limit."""
+_COARSEST = 0.30
+"""A region is refused if its voxels know R2* to no better than this share anywhere: their median is
+biased by some percent there."""
 _RESOLVED = 0.5
 """An S0 counts if its voxel's R2* is known at least to this share."""
 
@@ -80,10 +83,15 @@ def upper_limit(
         sigma_relative_sd=noise.relative_sd,
     )  # fmt: skip
     if np.isnan(limit):
-        raise StudyRefused(
-            Finding.of(
-                "signal-too-low", region=name, snr=f"{s0 / noise.sigma:.1f}",
-                relative=f"{100 * voxel_relative_se:g}",
-            )
-        )  # fmt: skip
+        # No voxel reaches the share anywhere. Up to where voxels are measured best, the median of
+        # many still stands; beyond, fast and slow decays look alike.
+        snr = s0 / noise.sigma
+        limit, best = best_measured(
+            stack.echo_times_ms, snr, n=noise.n_channels, sigma_relative_sd=noise.relative_sd
+        )
+        told = {"region": name, "snr": f"{snr:.1f}", "relative": f"{100 * voxel_relative_se:g}"}
+        if not best <= _COARSEST:
+            raise StudyRefused(Finding.of("signal-too-low", **told))
+        coarse = Finding.of("voxels-imprecise", best=f"{100 * best:.0f}", **told)
+        findings = (*findings, coarse)
     return limit, s0, findings

@@ -47,7 +47,7 @@ class RegionRules:
 
     voxel_relative_se: float = 0.10
     trim: str = "mad"
-    trim_mads: float = 3.0
+    trim_mads: float = 5.0
     interval: float = 0.95
     censored_share: float = 0.5
 

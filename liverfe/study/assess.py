@@ -28,6 +28,9 @@ from liverfe.study.noise_doubts import noise_findings, refuse_unbounded
 from liverfe.study.result import RegionResult, StudyResult
 from liverfe.wording import ESTIMATOR_REMARKS, POOLED_LIVER
 
+_NEGATIVE_SHARE = 0.01
+"""Interpolation leaves a few values below zero; phase, real or imaginary images have far more."""
+
 _ORDER = {"stop": 0, "caution": 1, "note": 2}
 
 
@@ -133,7 +136,7 @@ def refused_result(
 
 def _refuse_not_magnitude(stack: EchoStack) -> None:
     negative = float((stack.magnitude < 0).mean())
-    if negative > 0:
+    if negative > _NEGATIVE_SHARE:
         raise StudyRefused(Finding.of("signal-negative", share=f"{100 * negative:.2g}"))
 
 

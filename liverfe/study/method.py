@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import json
+import math
 from collections.abc import Mapping
 from dataclasses import asdict, dataclass, fields
 from typing import Any, Literal
@@ -51,7 +52,7 @@ class Method:
     n_channels: int | None = None
     voxel_relative_se: float = 0.10
     trim: Literal["none", "mad"] = "mad"
-    trim_mads: float = 3.0
+    trim_mads: float = 5.0
     interval: float = 0.95
     censored_share: float = 0.5
     curve: str | None = None
@@ -67,7 +68,12 @@ class Method:
             (self.sigma is not None) == (self.noise == "given"),
             "sigma", self.sigma, "a number exactly when noise is 'given'",
         )  # fmt: skip
-        _check(self.sigma is None or self.sigma > 0, "sigma", self.sigma, "a positive number")
+        _check(
+            self.sigma is None or 0 < self.sigma < math.inf,
+            "sigma",
+            self.sigma,
+            "a positive, finite number",
+        )
         _check(
             self.n_channels is None or 1 <= self.n_channels <= 64,
             "n_channels", self.n_channels, "1 to 64",

@@ -14,6 +14,8 @@ from liverfe.regions import RegionSummary
 
 _MATTERS = 0.05
 """A shift of R2* by this share is told as a caution: it could move a LIC across a decision."""
+_DECIDES = 0.50
+"""A shift by this share leaves nothing to state."""
 _OTHER_CHANNELS = 8
 """What is tried where the number of channels is unknown: a middling sum of squares."""
 _AGREE = 0.10
@@ -39,6 +41,11 @@ def noise_findings(
     -------
     tuple of Finding
         ``noise-disagrees`` or ``noise-cross-check``; ``channels-matter``; or nothing.
+
+    Raises
+    ------
+    StudyRefused
+        ``channels-decide``, if R2* hangs on the unknown number of channels.
     """
     sigmas = {c.method: c.sigma for c in noise.candidates if c.sigma is not None}
     found: list[Finding] = []
@@ -58,13 +65,15 @@ def noise_findings(
                 found.append(Finding.of("noise-cross-check", **told))
     if any(finding.code == "channels-not-tested" for finding in noise.findings):
         shift = _shift(summary, stack, noise, sigma=noise.sigma, n=_OTHER_CHANNELS)
+        facts = {
+            "region": summary.name,
+            "other": _OTHER_CHANNELS,
+            "shift": f"{100 * shift:+.0f}",
+        }
+        if abs(shift) > _DECIDES and summary.r2star.qualifier == "=":
+            raise StudyRefused(Finding.of("channels-decide", **facts))
         if abs(shift) > _MATTERS:
-            found.append(
-                Finding.of(
-                    "channels-matter", region=summary.name, other=_OTHER_CHANNELS,
-                    shift=f"{100 * shift:+.0f}",
-                )
-            )  # fmt: skip
+            found.append(Finding.of("channels-matter", **facts))
     return tuple(found)
 
 

@@ -211,6 +211,28 @@ SCIENCE_FINDINGS: dict[str, FindingWording] = {
             "method file."
         ),
     ),
+    "voxels-imprecise": FindingWording(
+        level="caution",
+        text=(
+            "Region {region}: S0 over sigma is {snr}; no voxel measures R2* to {relative} % with "
+            "these echoes, the best to {best} %. The median of the region is measured; its upper "
+            "limit is the R2* that voxels measure best."
+        ),
+        effect="At low signal the median of fast decays is biased by some percent.",
+        remedy="Repeat with larger voxels, more signal, or echoes that suit this R2*.",
+    ),
+    "channels-decide": FindingWording(
+        level="stop",
+        text=(
+            "Region {region}: the number of coil channels is not known and decides the result: "
+            "with {other} channels instead of one R2* would be {shift} % different."
+        ),
+        effect="The noise floor of eight channels taken for that of one turns 20 mg/g into 6.",
+        remedy=(
+            "Keep the background in the images, ask for adaptive coil combination, or state "
+            "n_channels in a method file."
+        ),
+    ),
     "no-tissue-signal": FindingWording(
         level="stop",
         text="Region {region} has no signal, and nothing else in the images tells S0.",
