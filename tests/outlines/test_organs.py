@@ -50,3 +50,22 @@ def test_the_whole_liver_is_known(name: str) -> None:
 @pytest.mark.parametrize("name", ["right lobe", "liver right", "spleen", "whole", "not liver", ""])
 def test_a_part_is_not_the_whole(name: str) -> None:
     assert not is_whole_liver(name)
+
+
+@pytest.mark.parametrize(
+    ("name", "organ"),
+    [
+        ("Milz", "spleen"),
+        ("bazo", "spleen"),
+        ("Muskel rechts", "muscle"),
+        ("Músculo", "muscle"),
+        ("Gefäß", "vessel"),
+        ("Bauchspeicheldrüse", "pancreas"),
+        ("Leber", "liver"),
+        ("foie droit", "liver"),
+        ("rechter Leberlappen", "liver"),
+    ],
+)
+def test_plain_organ_names_of_other_languages_are_understood(name: str, organ: str) -> None:
+    """Dictionary words; a muscle taken for liver would get a LIC in the normal range."""
+    assert organ_from_name(name) == organ
