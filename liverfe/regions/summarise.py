@@ -112,13 +112,16 @@ def summarise_region(
         *limit_findings,
         *_count_findings(name, counts, used, trimmed, n_voxels, limit, r2star),
     )
-    if r2star.qualifier == "=":
+    if r2star.qualifier == "=" and organ == "liver":
         summary_findings += _uneven_iron(name, sample, stack, noise, r2star.value, s0)
     if r2star.qualifier == "=" or stack.n_echoes == 2:
         summary_findings += misfit_findings(
             name, used | counts.over, stack, noise,
             r2star_per_s=r2star.value, s0=s0, median_chi2=median_chi2,
         )  # fmt: skip
+    if organ == "background":
+        # Noise is what it is drawn for: that it does not decay is no doubt about the study.
+        summary_findings = ()
     return RegionSummary(
         name=name,
         organ=organ,

@@ -15,7 +15,7 @@ from liverfe.errors import UsageError
 from liverfe.export import verify_folder
 from liverfe.journey import run_study
 from liverfe.phantom import MadeStudy
-from tests.journey.scans import all_text, edit, make_coarse
+from tests.journey.scans import all_text, edit, make_coarse, set_tag
 
 PLANTED = ("Quixleyplant", "Zeldaplant", "PLANTID77123", "PLANTACCESSION", "Plantdoctor")
 
@@ -124,3 +124,11 @@ def test_an_output_folder_that_cannot_be_written_is_told_before_the_work(
     with pytest.raises(UsageError):
         run_study([clean_study.images], out=out)
     assert out.read_text(encoding="ascii") == "a file in the way"
+
+
+def test_a_study_without_its_uid_goes_by_its_path(tmp_path: Path) -> None:
+    made = make_coarse(tmp_path / "study")
+    edit(made.folder / "images", set_tag("StudyInstanceUID", None))
+    outcome = run_study([made.folder / "images"], regions=made.labels, out=tmp_path / "out")
+    assert outcome.document["outcome"] == "reported"
+    assert len(outcome.document["study"]["key"]) == 16

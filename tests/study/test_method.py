@@ -25,7 +25,8 @@ def test_two_methods_that_differ_in_one_choice_have_two_ids() -> None:
     "change",
     [
         {"estimator": "best"}, {"noise": "none"}, {"noise": "given"}, {"sigma": 3.0},
-        {"noise": "given", "sigma": -1.0}, {"n_channels": 0}, {"n_channels": 65},
+        {"noise": "given", "sigma": -1.0}, {"noise": "given", "sigma": float("inf")},
+        {"n_channels": 0}, {"n_channels": 65},
         {"voxel_relative_se": 0.0}, {"voxel_relative_se": 0.6}, {"trim": "all"},
         {"trim_mads": 0.5}, {"interval": 1.0}, {"censored_share": 0.6},
     ],
