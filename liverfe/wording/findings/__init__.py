@@ -8,9 +8,18 @@ from liverfe.wording.findings._acquire import ACQUIRE_FINDINGS
 from liverfe.wording.findings._calibration import CALIBRATION_FINDINGS
 from liverfe.wording.findings._entry import FindingWording, Level
 from liverfe.wording.findings._journey import JOURNEY_FINDINGS
-from liverfe.wording.findings._science import SCIENCE_FINDINGS
+from liverfe.wording.findings._model import MODEL_FINDINGS
+from liverfe.wording.findings._noise import NOISE_FINDINGS
+from liverfe.wording.findings._regions import REGION_FINDINGS
 
-_PARTS = (ACQUIRE_FINDINGS, SCIENCE_FINDINGS, CALIBRATION_FINDINGS, JOURNEY_FINDINGS)
+_PARTS = (
+    ACQUIRE_FINDINGS,
+    NOISE_FINDINGS,
+    MODEL_FINDINGS,
+    REGION_FINDINGS,
+    CALIBRATION_FINDINGS,
+    JOURNEY_FINDINGS,
+)
 
 FINDING_TABLE: dict[str, FindingWording] = {
     code: entry for part in _PARTS for code, entry in part.items()
