@@ -14,22 +14,11 @@ from liverfe.calibration.fields import (
 from liverfe.calibration.lookup import find_by_key
 from liverfe.calibration.published import published_curves
 from liverfe.errors import Finding, StudyRefused, UsageError
+from liverfe.fit import estimator_named
 from liverfe.units import field_t_from_frequency_mhz
 
 _LABEL_OF_TWO_FIELDS_T = 3.0
 """What scanners of 2.89 T may state as well."""
-
-_NOISE_HANDLING_OF_ESTIMATOR: dict[str, str] = {
-    "rician-ml": "corrected",
-    "first-moment": "corrected",
-    "second-moment": "corrected",
-    "truncation": "truncation",
-    "offset": "offset",
-    "least-squares": "none",
-    "log-linear": "none",
-    "weighted-log-linear": "none",
-}
-"""How each estimator of `liverfe.study.ESTIMATORS` treats the noise floor."""
 
 
 def choose_curve(
@@ -105,7 +94,7 @@ def fit_model_findings(curve: CalibrationCurve, estimator: str) -> tuple[Finding
     curve : CalibrationCurve
         The curve that applies.
     estimator : str
-        Trade name of the fit, one of `liverfe.study.ESTIMATORS`.
+        Trade name of the fit, one of `liverfe.fit.ESTIMATORS`.
 
     Returns
     -------
@@ -117,9 +106,7 @@ def fit_model_findings(curve: CalibrationCurve, estimator: str) -> tuple[Finding
     ValueError
         If the estimator is unknown.
     """
-    if estimator not in _NOISE_HANDLING_OF_ESTIMATOR:
-        raise ValueError(f"unknown estimator {estimator!r}")
-    handling = _NOISE_HANDLING_OF_ESTIMATOR[estimator]
+    handling = estimator_named(estimator).noise_handling
     origin: NoiseHandling = curve.noise_handling
     if origin in ("unknown", handling):
         return ()

@@ -15,13 +15,13 @@ from collections.abc import Mapping
 from typing import Any
 
 from liverfe.export.result_json import rounded
+from liverfe.fit import estimator_named
 from liverfe.sources import cite
 from liverfe.units import s_from_ms
-from liverfe.wording import CAUTION
+from liverfe.wording import CAUTION, ESTIMATOR_WORDS
 from liverfe.wording.export import (
     DATASET_NAME,
     DATASET_README,
-    ESTIMATION_WORDS,
     MAP_DESCRIPTIONS,
 )
 
@@ -54,9 +54,6 @@ _UNITS = {
     "misfit": "1",
     "lic": "mg/g",
 }
-
-_ESTIMATOR_REFERENCES = {"rician-ml": "sijbers1998"}
-"""The paper behind an estimator, where it has one; the plain ones are textbook methods."""
 
 _NOT_IN_BIDS = ("R2starSEmap", "misfitmap", "LICmap")
 
@@ -181,9 +178,10 @@ def _estimation(kind: str, document: Mapping[str, Any]) -> dict[str, Any]:
             "CalibrationEvidence": curve["evidence"],
             "CalibrationLocal": curve["local"],
         }
-    fields = {"EstimationAlgorithm": ESTIMATION_WORDS[method["estimator"]]}
-    reference = _ESTIMATOR_REFERENCES.get(method["estimator"])
-    return {**fields, "EstimationReference": cite(reference)} if reference else fields
+    key = method["estimator"]
+    fields = {"EstimationAlgorithm": ESTIMATOR_WORDS[key].algorithm}
+    papers = [cite(paper) for paper in estimator_named(key).citations]
+    return {**fields, "EstimationReference": "; ".join(papers)} if papers else fields
 
 
 def _acquisition(stack: Mapping[str, Any]) -> dict[str, Any]:

@@ -13,7 +13,7 @@ class FitOutcome(IntEnum):
     """How the fit of one voxel ended."""
 
     NOT_FITTED = 0
-    """An echo is missing or not finite."""
+    """An echo that counts is missing or no magnitude, or fewer count than the fit needs."""
     CONVERGED = 1
     AT_LOWER_BOUND = 2
     """No decay could be resolved: R2* ran to zero."""

@@ -2,35 +2,73 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-
 import numpy as np
 from numpy.typing import NDArray
 
 from liverfe.echoes import EchoStack
-from liverfe.fit.bounds import r2star_bound_per_s
-from liverfe.fit.decay import DecayFit, FitOutcome
-from liverfe.fit.least_squares import fit_least_squares, fit_moment, fit_truncated
-from liverfe.fit.log_linear import fit_log_linear
+from liverfe.fit.comparators import COMPARATORS
+from liverfe.fit.comparators.judgement import judge_like_the_house
+from liverfe.fit.decay import DecayFit
+from liverfe.fit.estimator import Estimator
 from liverfe.fit.rician import fit_rician_ml
 from liverfe.fit.rows import DecayRows
-from liverfe.fit.tables import look_up, signal_tables
 from liverfe.noise import NoiseLevel
 
-ESTIMATORS = (
-    "rician-ml",
-    "first-moment",
-    "second-moment",
-    "least-squares",
-    "log-linear",
-    "weighted-log-linear",
-    "truncation",
-    "offset",
+
+def _fit_house(
+    signal: NDArray[np.float32],
+    echo_times_ms: NDArray[np.float64],
+    sigma: NDArray[np.float64],
+    n: int,
+    usable: NDArray[np.bool_] | None,
+) -> DecayRows:
+    return fit_rician_ml(signal, echo_times_ms, sigma, n, usable=usable)
+
+
+_HOUSE = Estimator(
+    key="rician-ml",
+    fit=_fit_house,
+    noise_handling="corrected",
+    is_for_reports=True,
+    citations=("sijbers1998",),
 )
-"""Estimators by their trade names; the first is the house's, the others are for comparison."""
+
+_REGISTRY = {estimator.key: estimator for estimator in (_HOUSE, *COMPARATORS)}
+
+ESTIMATORS = tuple(_REGISTRY)
+"""Estimators by their trade names; the first is the house's, the others stand beside it."""
 
 
-def fit_r2star(stack: EchoStack, noise: NoiseLevel, *, estimator: str = "rician-ml") -> DecayFit:
+def estimator_named(key: str) -> Estimator:
+    """Look an estimator up.
+
+    Parameters
+    ----------
+    key : str
+        One of `ESTIMATORS`.
+
+    Returns
+    -------
+    Estimator
+        Its entry of the registry.
+
+    Raises
+    ------
+    ValueError
+        If there is none of this name.
+    """
+    if key not in _REGISTRY:
+        raise ValueError(f"unknown estimator {key!r}; one of {', '.join(ESTIMATORS)}")
+    return _REGISTRY[key]
+
+
+def fit_r2star(
+    stack: EchoStack,
+    noise: NoiseLevel,
+    *,
+    model: str = "rician-ml",
+    usable: NDArray[np.bool_] | None = None,
+) -> DecayFit:
     """Fit a mono-exponential decay to every voxel.
 
     Parameters
@@ -39,33 +77,42 @@ def fit_r2star(stack: EchoStack, noise: NoiseLevel, *, estimator: str = "rician-
         At least two echoes.
     noise : NoiseLevel
         Sigma and number of channels; nothing is assumed beside it.
-    estimator : str
+    model : str
         One of `ESTIMATORS`.
+    usable : ndarray of bool, shape (X, Y, Z, E), or None
+        Echoes that count in each voxel; None: all.
 
     Returns
     -------
     DecayFit
-        On the grid of the stack; slices with a missing image are not fitted.
+        On the grid of the stack; a voxel is not fitted where an echo that counts is missing or
+        fewer count than the estimator needs.
 
     Raises
     ------
     ValueError
-        If there are fewer than two echoes or the estimator is unknown.
+        If there are fewer than two echoes, the estimator is unknown or `usable` has another shape.
     """
     if stack.n_echoes < 2:
         raise ValueError("a decay needs at least two echoes")
-    if estimator not in ESTIMATORS:
-        raise ValueError(f"unknown estimator {estimator!r}; one of {', '.join(ESTIMATORS)}")
-    signal = stack.magnitude.reshape(-1, stack.n_echoes)
+    if usable is not None and usable.shape != stack.magnitude.shape:
+        raise ValueError(f"usable has shape {usable.shape}, not {stack.magnitude.shape}")
     sigma = (
         np.array([noise.sigma])
         if noise.sigma_map is None
         else noise.sigma_map.reshape(-1).astype(np.float64)
     )
-    rows = fit_rows(signal, stack.echo_times_ms, sigma, noise.n_channels, estimator=estimator)
+    rows = fit_rows(
+        stack.magnitude.reshape(-1, stack.n_echoes),
+        stack.echo_times_ms,
+        sigma,
+        noise.n_channels,
+        model=model,
+        usable=None if usable is None else usable.reshape(-1, stack.n_echoes),
+    )
     shape = stack.grid.shape
     return DecayFit(
-        estimator=estimator,
+        estimator=model,
         r2star_per_s=rows.r2star_per_s.reshape(shape),
         s0=rows.s0.reshape(shape),
         r2star_se_per_s=rows.r2star_se_per_s.reshape(shape),
@@ -80,7 +127,8 @@ def fit_rows(
     sigma: NDArray[np.float64],
     n: int,
     *,
-    estimator: str = "rician-ml",
+    model: str = "rician-ml",
+    usable: NDArray[np.bool_] | None = None,
 ) -> DecayRows:
     """Fit a list of voxels.
 
@@ -96,50 +144,26 @@ def fit_rows(
     sigma : ndarray of float64, shape (1,) or (V,)
         Noise SD per channel, signal units.
     n : int
-        Effective number of channels.
-    estimator : str
+        Effective number of channels, 1 to 64.
+    model : str
         One of `ESTIMATORS`.
+    usable : ndarray of bool, shape (V, E), or None
+        Echoes that count in each voxel; None: all.
 
     Returns
     -------
     DecayRows
         One row a voxel.
+
+    Raises
+    ------
+    ValueError
+        If the estimator is unknown or `usable` has another shape than `signal`.
     """
-    if estimator == "rician-ml":
-        return fit_rician_ml(signal, echo_times_ms, sigma, n)
-    typical = float(np.median(sigma))
-    fits: dict[str, Callable[[], DecayRows]] = {
-        "first-moment": lambda: fit_moment(signal, echo_times_ms, typical, n, order=1),
-        "second-moment": lambda: fit_moment(signal, echo_times_ms, typical, n, order=2),
-        "least-squares": lambda: fit_least_squares(signal, echo_times_ms),
-        "log-linear": lambda: fit_log_linear(signal, echo_times_ms, weighted=False),
-        "weighted-log-linear": lambda: fit_log_linear(signal, echo_times_ms, weighted=True),
-        "truncation": lambda: fit_truncated(signal, echo_times_ms, typical),
-        "offset": lambda: fit_least_squares(signal, echo_times_ms, with_offset=True),
-    }
-    rows = fits[estimator]()
-    _judge_like_the_house(rows, signal, echo_times_ms, sigma, n)
+    estimator = estimator_named(model)
+    if usable is not None and usable.shape != signal.shape:
+        raise ValueError(f"usable has shape {usable.shape}, not {signal.shape}")
+    rows = estimator.fit(signal, echo_times_ms, sigma, n, usable)
+    if estimator is not _HOUSE:
+        judge_like_the_house(rows, signal, echo_times_ms, sigma, n, usable)
     return rows
-
-
-def _judge_like_the_house(
-    rows: DecayRows,
-    signal: NDArray[np.float32],
-    echo_times_ms: NDArray[np.float64],
-    sigma: NDArray[np.float64],
-    n: int,
-) -> None:
-    """Fill in bound and misfit, and mark decays that are none."""
-    fitted = np.isfinite(rows.r2star_per_s) & (rows.s0 > 0)
-    sigmas = sigma if len(sigma) == 1 else sigma[fitted]
-    rate, s0 = rows.r2star_per_s[fitted].astype(np.float64), rows.s0[fitted].astype(np.float64)
-    positive = np.maximum(rate, 0.0)
-    with np.errstate(over="ignore"):  # a bound beyond float32 is as good as infinite
-        rows.r2star_se_per_s[fitted] = r2star_bound_per_s(echo_times_ms, positive, s0, sigmas, n=n)
-    if len(echo_times_ms) > 2:
-        tables = signal_tables(n)
-        a = (s0 / sigmas)[:, None] * np.exp(-positive[:, None] * echo_times_ms * 1e-3)
-        d = look_up(tables.excess, a / (a + tables.amplitude_scale))
-        misfit = (signal[fitted] / sigmas[:, None] - a - d) ** 2 / (2.0 * n - d**2 - 2.0 * a * d)
-        rows.reduced_chi2[fitted] = misfit.sum(axis=1) / (len(echo_times_ms) - 2)
-    rows.outcome[fitted & (rows.r2star_per_s <= 0)] = FitOutcome.AT_LOWER_BOUND

@@ -1,8 +1,8 @@
-"""The compiled loops: Rician (noncentral-chi) maximum likelihood, voxel by voxel.
+"""The compiled loops of maximum likelihood in double precision, for any signal model.
 
-No SciPy inside; the equations come in as tables (`liverfe.fit.tables`). Each voxel is worked out
-by itself, so results do not depend on chunks or threads. The kernels release the interpreter lock;
-whoever calls them may use plain threads (`liverfe.fit.blocks`).
+Each voxel is worked out by itself, so results do not
+depend on chunks or threads. The kernels release the interpreter lock; whoever calls them may use
+plain threads (`liverfe.fit.blocks`).
 
 Echo times are in ms here and R2* in 1/ms; amplitudes in units of sigma.
 """
@@ -10,62 +10,59 @@ Echo times are in ms here and R2* in 1/ms; amplitudes in units of sigma.
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
+
+from liverfe.fit.compiled import compiled
+from liverfe.fit.likelihood_kernels import (
+    Workspace,
+    copy,
+    data_terms,
+    inner,
+    log_likelihood,
+    misfit,
+    score_and_information,
+)
+from liverfe.fit.signal_models import SignalModel
+from liverfe.fit.tables import KernelTables
 
 Array = NDArray[np.float64]
 Array32 = NDArray[np.float32]
+Used = NDArray[np.bool_]
 
 NOT_FITTED, CONVERGED, AT_LOWER_BOUND, AT_UPPER_BOUND, NOT_CONVERGED, NO_SIGNAL = range(6)
 
-_MAX_STEPS = 40
+_MAX_STEPS = 200
 _MAX_HALVINGS = 12
-_STOP = 1e-6
-"""A step that can gain less than this in log-likelihood is taken and is the last one: it is 0.0014
-standard errors long, and leaves about a tenth of that."""
+_TOO_SMALL_TO_SEE = 1e-7
+"""Gains in log-likelihood below this drown in the error of the tables: such steps are taken without
+being checked."""
+_STOP = 1e-10
+"""A step that can gain less than this is the last one: it is 1.4e-5 standard errors long."""
 _USABLE = 2.0
 """Echoes start the fit while their noise-corrected amplitude is above this many sigma."""
-_UNRESOLVED = 1.0
-"""A fit that did not settle and whose standard error exceeds R2* itself decays too fast to see."""
+_UNRESOLVED, _FAST = 1.0, 0.5
+"""A decay whose standard error exceeds R2* itself and whose R2* times the echo spacing is above one
+half is too fast to see."""
+_NEARLY_NOTHING = 1e-5
+"""A gain below this that no step brings is the rounding of the tables: the maximum is reached."""
+_NO_RATE = 1e-9
+"""A rate (1/ms) that is as good as zero: T2* of a million seconds."""
+_BETTER = 1e-6
+"""By how much a second start must be likelier to be believed."""
 
 
-@njit(cache=True, inline="always")
-def _look_up(table: Array, u: float) -> float:
-    x = u * len(table)
-    i = int(x)
-    if i >= len(table):
-        i = len(table) - 1
-    t = x - i
-    value: float = table[i, 0] + t * (table[i, 1] + t * (table[i, 2] + t * table[i, 3]))
-    return value
+@inner
+def start(times: Array, m: Array, used: Used, n: int, p: Array) -> None:
+    """Weighted log-linear fit of the leading echoes above the noise, noise power taken off.
 
-
-@njit(cache=True)
-def _log_likelihood(
-    m: Array, times: Array, log_s0: float, rate: float, n: int, kernel: Array,
-    product_scale: float, amplitudes: Array,
-) -> float:  # fmt: skip
-    """Log-likelihood up to terms in the data alone; leaves the amplitudes behind."""
-    total = 0.0
-    for e in range(len(times)):
-        a = np.exp(log_s0 - rate * times[e])
-        amplitudes[e] = a
-        z = m[e] * a
-        shape = _look_up(kernel, z / (z + product_scale))
-        total += shape - (n - 0.5) * np.log(z + product_scale) - 0.5 * (a - m[e]) ** 2
-    return total
-
-
-@njit(cache=True)
-def _start(m: Array, times: Array, n: int) -> tuple[float, float]:
-    """Weighted log-linear fit of the leading echoes above the noise, noise power taken off."""
+    Where there are not two of them, as `start_fast`.
+    """
     s_w = s_t = s_tt = s_y = s_ty = 0.0
-    used = 0
-    first = 0.0
-    for e in range(len(times)):
+    n_leading = 0
+    for e in range(len(m)):
+        if not used[e]:
+            continue
         power = m[e] * m[e] - (2.0 * n - 1.0)
-        if e == 0:
-            first = np.sqrt(max(power, 1.0))
         if power < _USABLE * _USABLE:
             break
         y = 0.5 * np.log(power)
@@ -74,156 +71,244 @@ def _start(m: Array, times: Array, n: int) -> tuple[float, float]:
         s_tt += power * times[e] * times[e]
         s_y += power * y
         s_ty += power * times[e] * y
-        used += 1
-    if used < 2:
-        # One echo above the noise: the slowest decay that takes the second one down to sigma.
-        rate = max(np.log(first), 0.1) / (times[1] - times[0])
-        return np.log(first) + rate * times[0], rate
-    rate = (s_t * s_y - s_w * s_ty) / (s_w * s_tt - s_t * s_t)
-    rate = max(rate, 0.0)
-    return (s_y + rate * s_t) / s_w, rate
+        n_leading += 1
+    if n_leading < 2:
+        start_fast(times, m, used, n, p)
+        return
+    p[1] = max((s_t * s_y - s_w * s_ty) / (s_w * s_tt - s_t * s_t), 0.0)
+    p[0] = (s_y + p[1] * s_t) / s_w
 
 
-@njit(cache=True)
-def _score_and_information(
-    m: Array, times: Array, amplitudes: Array, ratio: Array, information: Array,
-    product_scale: float, amplitude_scale: float, out: Array,
-) -> None:  # fmt: skip
-    """Score and Fisher information in (ln S0, R2*): out = [s0, s1, f00, f01, f11]."""
-    out[:] = 0.0
-    for e in range(len(times)):
-        t = times[e]
-        a = amplitudes[e]
-        z = m[e] * a
-        pull = a * (m[e] * _look_up(ratio, z / (z + product_scale)) - a)
-        weight = a * a * _look_up(information, a / (a + amplitude_scale))
-        out[0] += pull
-        out[1] -= t * pull
-        out[2] += weight
-        out[3] -= t * weight
-        out[4] += t * t * weight
-
-
-@njit(cache=True)
-def _chi2(m: Array, amplitudes: Array, n: int, excess: Array, amplitude_scale: float) -> float:
-    total = 0.0
+@inner
+def start_fast(times: Array, m: Array, used: Used, n: int, p: Array) -> None:
+    """The slowest decay that takes the second echo down to sigma, from the first one alone."""
+    seen, first, t_first, t_second = 0, 1.0, 0.0, 1.0
     for e in range(len(m)):
-        a = amplitudes[e]
-        d = _look_up(excess, a / (a + amplitude_scale))
-        total += (m[e] - a - d) ** 2 / (2.0 * n - d * d - 2.0 * a * d)
-    return total
+        if used[e] and seen < 2:
+            if seen == 0:
+                first, t_first = np.sqrt(max(m[e] * m[e] - (2.0 * n - 1.0), 1.0)), times[e]
+            t_second = times[e]
+            seen += 1
+    p[1] = max(np.log(first), 0.1) / (t_second - t_first)
+    p[0] = np.log(first) + p[1] * t_first
 
 
-@njit(cache=True)
-def _climb(
-    m: Array, times: Array, max_rate: float, n: int, ratio: Array, kernel: Array,
-    information: Array, product_scale: float, amplitude_scale: float, amplitudes: Array,
-    trial: Array, work: Array,
-) -> tuple[float, float, int]:  # fmt: skip
-    """Fisher scoring with step halving; returns ln S0, R2* and the outcome."""
-    log_s0, rate = _start(m, times, n)
-    rate = min(rate, max_rate)
-    best = _log_likelihood(m, times, log_s0, rate, n, kernel, product_scale, amplitudes)
+@inner
+def solve(work: Workspace, right: Array) -> bool:
+    """Solve ``info step = right`` for the parameters not held; False where it cannot be solved."""
+    n_p = len(right)
+    info, factor, step, held = work.info, work.factor, work.step, work.held
+    for k in range(n_p):
+        for j in range(k + 1):
+            value = info[k, j]
+            if held[k] or held[j]:
+                value = 1.0 if k == j else 0.0
+            for i in range(j):
+                value -= factor[k, i] * factor[j, i]
+            if k != j:
+                factor[k, j] = value / factor[j, j]
+            elif value > 1e-14 * (1.0 if held[k] else info[k, k]):
+                factor[k, k] = np.sqrt(value)
+            else:
+                return False
+    for k in range(n_p):
+        value = 0.0 if held[k] else right[k]
+        for j in range(k):
+            value -= factor[k, j] * step[j]
+        step[k] = value / factor[k, k]
+    for back in range(n_p):
+        k = n_p - 1 - back
+        value = step[k]
+        for j in range(k + 1, n_p):
+            value -= factor[j, k] * step[j]
+        step[k] = value / factor[k, k]
+    return True
+
+
+@inner
+def find_step(lower: Array, upper: Array, p: Array, n_free: int, work: Workspace) -> bool:
+    """Fisher's step of the first `n_free` parameters; one on a bound that wants beyond is held."""
+    n_p = len(p)
+    for k in range(n_p):
+        work.held[k] = k >= n_free
+    for _ in range(n_p + 1):
+        if not solve(work, work.score):
+            return False
+        again = False
+        for k in range(n_p):
+            beyond = (p[k] <= lower[k] and work.step[k] < 0.0) or (
+                p[k] >= upper[k] and work.step[k] > 0.0
+            )
+            if beyond and not work.held[k]:
+                work.held[k] = True
+                again = True
+        if not again:
+            return True
+    return False
+
+
+@inner
+def try_point(lower: Array, upper: Array, p: Array, share: float, work: Workspace) -> None:
+    """The point a share of the step away; beyond a bound it stops there, all following along."""
+    part = share
+    for k in range(len(p)):
+        if p[k] + part * work.step[k] < lower[k]:
+            part = (lower[k] - p[k]) / work.step[k]
+        elif p[k] + part * work.step[k] > upper[k]:
+            part = (upper[k] - p[k]) / work.step[k]
+    for k in range(len(p)):
+        work.p_trial[k] = min(max(p[k] + part * work.step[k], lower[k]), upper[k])
+
+
+@inner
+def climb(
+    model: SignalModel, m: Array, used: Used, noise: KernelTables, n_free: int, work: Workspace
+) -> tuple[float, int]:
+    """Fisher scoring with step halving from ``work.p`` on; returns log-likelihood and outcome.
+
+    Parameters from number `n_free` on stay where they are.
+    """
+    p, lower, upper = work.p, model.lower, model.upper
+    for k in range(len(p)):
+        p[k] = min(max(p[k], lower[k]), upper[k])
+    best = log_likelihood(model, m, used, p, noise, work.amplitudes)
     for _ in range(_MAX_STEPS):
-        _score_and_information(
-            m, times, amplitudes, ratio, information, product_scale, amplitude_scale, work
-        )
-        s0, s1, f00, f01, f11 = work[0], work[1], work[2], work[3], work[4]
-        if rate <= 0.0 and (f00 * s1 - f01 * s0) <= 0.0:
-            # On the lower bound and pulled below it: only S0 may still move.
-            step0, step1 = s0 / f00, 0.0
-        elif rate >= max_rate and (f00 * s1 - f01 * s0) >= 0.0:
-            step0, step1 = s0 / f00, 0.0
-        else:
-            det = f00 * f11 - f01 * f01
-            if not det > 0.0:
-                return log_s0, rate, NOT_CONVERGED
-            step0 = (f11 * s0 - f01 * s1) / det
-            step1 = (f00 * s1 - f01 * s0) / det
-        gain = 0.5 * (step0 * s0 + step1 * s1)
-        if gain < _STOP:
-            log_s0 += step0
-            rate = min(max(rate + step1, 0.0), max_rate)
-            for e in range(len(times)):
-                amplitudes[e] = np.exp(log_s0 - rate * times[e])
-            if rate <= 0.0:
-                return log_s0, rate, AT_LOWER_BOUND
-            if rate >= max_rate:
-                return log_s0, rate, AT_UPPER_BOUND
-            return log_s0, rate, CONVERGED
-        share = 1.0
-        moved = False
+        score_and_information(model, m, used, p, noise, work)
+        if not find_step(lower, upper, p, n_free, work):
+            return best, NOT_CONVERGED
+        gain = 0.0
+        for k in range(len(p)):
+            gain += 0.5 * work.step[k] * work.score[k]
+        share, moved = 1.0, False
         for _halving in range(_MAX_HALVINGS):
-            # A step beyond a bound stops at it, S0 following along the same direction.
-            part = share
-            if rate + part * step1 < 0.0:
-                part = rate / -step1 if step1 < 0.0 else 0.0
-            elif rate + part * step1 > max_rate:
-                part = (max_rate - rate) / step1
-            new_log_s0 = log_s0 + part * step0
-            new_rate = min(max(rate + part * step1, 0.0), max_rate)
-            if part < share and part <= 1e-12:
-                new_log_s0 = log_s0 + share * s0 / f00
-            value = _log_likelihood(m, times, new_log_s0, new_rate, n, kernel, product_scale, trial)
-            if value > best:
-                log_s0, rate, best, moved = new_log_s0, new_rate, value, True
-                amplitudes[:] = trial
-                if rate < 1e-12:
-                    rate = 0.0
+            try_point(lower, upper, p, share, work)
+            value = log_likelihood(model, m, used, work.p_trial, noise, work.trial)
+            if value > best or (gain < _TOO_SMALL_TO_SEE and np.isfinite(value)):
+                copy(work.p_trial, p)
+                copy(work.trial, work.amplitudes)
+                best, moved = value, True
                 break
             share *= 0.5
+        if gain < _STOP or (not moved and gain < _NEARLY_NOTHING):
+            if p[1] <= lower[1] + _NO_RATE:
+                return best, AT_LOWER_BOUND
+            if p[1] >= upper[1]:
+                return best, AT_UPPER_BOUND
+            return best, CONVERGED
         if not moved:
-            # No step uphill is left that double precision can see.
-            if gain < 1e-5:
-                return log_s0, rate, CONVERGED
-            return log_s0, rate, NOT_CONVERGED
-    return log_s0, rate, NOT_CONVERGED
+            return best, NOT_CONVERGED
+    return best, NOT_CONVERGED
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
-def fit_maximum_likelihood(
-    signal: Array32, times: Array, sigma: Array, n: int, max_rate: float,
-    no_signal_power: float, no_signal_first: float,
-    ratio: Array, kernel: Array, excess: Array, information: Array,
-    product_scale: float, amplitude_scale: float,
-    rate_out: Array32, s0_out: Array32, se_out: Array32, chi2_out: Array32,
+@inner
+def climb_all(
+    model: SignalModel, times: Array, m: Array, used: Used, noise: KernelTables, work: Workspace
+) -> tuple[float, int]:
+    """Climb from every start; the point of greatest likelihood is left in ``work.p_best``.
+
+    First one exponential, the model's own parameters being nil: from the leading echoes, and from
+    one echo alone in case that is a trap. From its maximum then each start of the own parameters.
+    """
+    n_p = len(work.p)
+    best, outcome = -np.inf, NOT_CONVERGED
+    n_own = len(model.starts) if n_p > 2 else 0
+    for attempt in range(2 + n_own):
+        own = attempt >= 2
+        for k in range(2, n_p):
+            work.p[k] = model.starts[attempt - 2, k - 2] if own else 0.0
+        if attempt == 0:
+            start(times, m, used, noise.n, work.p)
+        elif attempt == 1:
+            start_fast(times, m, used, noise.n, work.p)
+        else:
+            if attempt == 2:
+                copy(work.p_best, work.p_simple)
+                best = -np.inf
+            work.p[0], work.p[1] = work.p_simple[0], work.p_simple[1]
+        value, how = climb(model, m, used, noise, n_p if own else 2, work)
+        if value > best + _BETTER and (attempt != 1 or how != NOT_CONVERGED):
+            best, outcome = value, how
+            copy(work.p, work.p_best)
+    return best, outcome
+
+
+@inner
+def standard_errors(work: Workspace, se: Array) -> float:
+    """Fill in standard errors from the inverse of the information; returns its log determinant."""
+    n_p = len(work.p)
+    for k in range(n_p):
+        work.held[k] = False
+    for k in range(n_p):
+        for j in range(n_p):
+            work.score[j] = 1.0 if j == k else 0.0
+        if not solve(work, work.score):
+            for j in range(n_p):
+                se[j] = np.inf
+            return -np.inf
+        se[k] = np.sqrt(work.step[k])
+    log_det = 0.0
+    for k in range(n_p):
+        log_det += 2.0 * np.log(work.factor[k, k])
+    return log_det
+
+
+@inner
+def is_unresolved(rate: float, se: float, times: Array) -> bool:
+    """Whether a decay is over between two echoes and its rate as uncertain as itself."""
+    return rate * (times[1] - times[0]) > _FAST and not se < _UNRESOLVED * rate
+
+
+@inner
+def take_in(
+    row: Array32, scale: float, usable: Used, m: Array, used: Used
+) -> tuple[int, float, float]:
+    """One voxel in units of sigma: usable echoes (-1 if one is no magnitude), power, first echo."""
+    n_used, power, first, fine = 0, 0.0, 0.0, True
+    for e in range(len(m)):
+        used[e] = usable[e]
+        m[e] = row[e] * scale
+        if used[e]:
+            if n_used == 0:
+                first = m[e]
+            n_used += 1
+            power += m[e] * m[e]
+            fine = fine and m[e] >= 0.0
+    if not fine or not np.isfinite(power):
+        return -1, power, first
+    return n_used, power, first
+
+
+@compiled(nogil=True, error_model="numpy", no_cfunc_wrapper=True)
+def fit_voxels(
+    model: SignalModel, signal: Array32, usable: Used, times: Array,
+    sigma: Array, rows: NDArray[np.intp], noise: KernelTables, no_signal_power: Array,
+    no_signal_first: float, m: Array, used: Used, work: Workspace,
+    p_out: Array, se_out: Array, likelihood_out: Array, log_det_out: Array, chi2_out: Array32,
     outcome_out: NDArray[np.uint8],
 ) -> None:  # fmt: skip
-    """Fit each row of `signal`; see `liverfe.fit.rician` for what the arguments mean."""
-    n_voxels, n_echoes = signal.shape
-    m, amplitudes, trial = np.empty(n_echoes), np.empty(n_echoes), np.empty(n_echoes)
-    work = np.empty(5)
-    for v in range(n_voxels):
-        scale = 1.0 / sigma[v % len(sigma)]
-        power = 0.0
-        usable = True
-        for e in range(n_echoes):
-            m[e] = signal[v, e] * scale
-            power += m[e] * m[e]
-            if not m[e] >= 0.0:
-                usable = False
-        if not usable or not np.isfinite(power):
-            outcome_out[v] = NOT_FITTED
+    """Fit the rows named in `rows`; see `liverfe.fit.engine` for what the arguments mean."""
+    n_p = len(model.lower)
+    for place in range(len(rows)):
+        v = rows[place]
+        s = sigma[v % len(sigma)]
+        n_used, power, first = take_in(signal[v], 1.0 / s, usable[v % len(usable)], m, used)
+        if n_used < n_p:
+            outcome_out[place] = NOT_FITTED
             continue
-        if power < no_signal_power and m[0] < no_signal_first:
-            outcome_out[v] = NO_SIGNAL
+        if power < no_signal_power[n_used] and first < no_signal_first:
+            outcome_out[place] = NO_SIGNAL
             continue
-        log_s0, rate, outcome = _climb(
-            m, times, max_rate, n, ratio, kernel, information, product_scale, amplitude_scale,
-            amplitudes, trial, work,
-        )  # fmt: skip
-        _score_and_information(
-            m, times, amplitudes, ratio, information, product_scale, amplitude_scale, work
-        )
-        det = work[2] * work[4] - work[3] * work[3]
-        se = np.sqrt(work[2] / det) if det > 0.0 else np.inf
-        if outcome == NOT_CONVERGED and not se < _UNRESOLVED * rate:
+        best, outcome = climb_all(model, times, m, used, noise, work)
+        best = log_likelihood(model, m, used, work.p_best, noise, work.amplitudes)
+        score_and_information(model, m, used, work.p_best, noise, work)
+        log_det_out[place] = standard_errors(work, se_out[place])
+        if (outcome == CONVERGED or outcome == NOT_CONVERGED) and is_unresolved(  # noqa: SIM109
+            work.p_best[1], se_out[place, 1], times
+        ):
             outcome = AT_UPPER_BOUND
-        outcome_out[v] = outcome
-        if outcome == CONVERGED or outcome == AT_LOWER_BOUND:  # noqa: SIM109 - compiled
-            rate_out[v] = rate * 1000.0
-            s0_out[v] = np.exp(log_s0) / scale
-            se_out[v] = se * 1000.0
-            if n_echoes > 2:
-                misfit = _chi2(m, amplitudes, n, excess, amplitude_scale)
-                chi2_out[v] = misfit / (n_echoes - 2)
+        outcome_out[place] = outcome
+        copy(work.p_best, p_out[place])
+        p_out[place, 0] += np.log(s)
+        likelihood_out[place] = best + data_terms(m, used, s, noise.n)
+        if n_used > n_p:
+            chi2_out[place] = misfit(m, used, work.amplitudes, noise) / (n_used - n_p)

@@ -1,22 +1,22 @@
-"""Maximum likelihood under the noise of magnitude images: the estimator of the house."""
+"""Mono-exponential maximum likelihood under the noise of magnitude images: the house's estimator.
+
+Nearly all voxels are fitted sixteen at a time (`liverfe.fit.lane_kernels`); those that are anything
+but plain go to the engine (`liverfe.fit.engine`). Both climb the same likelihood.
+"""
 
 from __future__ import annotations
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.special import chdtri
 
 from liverfe.fit.blocks import run_in_blocks
-from liverfe.fit.kernels import fit_maximum_likelihood
+from liverfe.fit.decay import FitOutcome
+from liverfe.fit.engine import fit_decays, no_signal_first, no_signal_powers
+from liverfe.fit.lane_kernels import LEFT_TO_ENGINE, UNSETTLED, LaneNoise, fit_in_lanes
+from liverfe.fit.lanes import WIDTH
+from liverfe.fit.rationals import signal_rationals
 from liverfe.fit.rows import DecayRows
-from liverfe.fit.tables import signal_tables
-
-_NO_SIGNAL_CHANCE = 1e-3
-"""A voxel has no signal if its summed power is within this chance of pure noise ..."""
-_NO_FIRST_ECHO_CHANCE = 1e-4
-"""... and its first echo within this: one bright echo is a decay too fast, not an absence."""
-_MAX_RATE_TIMES_FIRST_ECHO = 12.0
-"""Upper bound of R2*: at this multiple of 1 / TE1 a signal of any scanner is gone at TE1."""
+from liverfe.fit.signal_models import max_rate_per_ms, mono_exponential
 
 
 def fit_rician_ml(
@@ -24,22 +24,23 @@ def fit_rician_ml(
     echo_times_ms: NDArray[np.float64],
     sigma: NDArray[np.float64],
     n: int,
+    *,
+    usable: NDArray[np.bool_] | None = None,
 ) -> DecayRows:
     """Fit a mono-exponential decay by maximum likelihood, voxel by voxel.
-
-    Fisher scoring in (ln S0, R2*) from a weighted log-linear start, with step halving on the exact
-    log-likelihood of Rician (n = 1) or noncentral-chi magnitudes.
 
     Parameters
     ----------
     signal : ndarray of float32, shape (V, E)
-        Magnitudes, signal units.
+        Magnitudes, signal units; any memory order.
     echo_times_ms : ndarray of float64, shape (E,)
         Echo times in ms.
     sigma : ndarray of float64, shape (1,) or (V,)
         Noise SD per channel, signal units.
     n : int
         Effective number of channels.
+    usable : ndarray of bool, shape (V, E), or None
+        Echoes that count in each voxel; None: all.
 
     Returns
     -------
@@ -50,22 +51,89 @@ def fit_rician_ml(
     ----------
     Sijbers 1998 (maximum likelihood for Rician magnitudes); Gudbjartsson 1995; Constantinides 1997.
     """
-    n_voxels, n_echoes = signal.shape
-    rows = DecayRows.empty(n_voxels)
-    tables = signal_tables(n)
-    power = float(chdtri(2 * n * n_echoes, _NO_SIGNAL_CHANCE))
-    first = float(np.sqrt(chdtri(2 * n, _NO_FIRST_ECHO_CHANCE)))
-    max_rate = _MAX_RATE_TIMES_FIRST_ECHO / float(echo_times_ms[0])
+    rows = DecayRows.empty(len(signal))
+    if usable is None:
+        _fit_in_lanes(rows, signal, echo_times_ms, sigma, n)
+        left = np.flatnonzero(rows.outcome == LEFT_TO_ENGINE)
+    else:
+        left = np.arange(len(signal))
+    if len(left):
+        model = mono_exponential(echo_times_ms)
+        fits = fit_decays(signal, model, sigma, n, usable=usable, rows=left)
+        rows.outcome[left] = fits.outcome
+        for values in (rows.r2star_per_s, rows.s0):
+            values[left] = np.nan
+        fitted = np.isin(fits.outcome, (FitOutcome.CONVERGED, FitOutcome.AT_LOWER_BOUND))
+        shown = left[fitted]
+        rows.r2star_per_s[shown] = fits.parameters[fitted, 1]
+        rows.s0[shown] = np.exp(fits.parameters[fitted, 0])
+        rows.r2star_se_per_s[shown] = fits.standard_errors[fitted, 1]
+        rows.reduced_chi2[shown] = fits.reduced_chi2[fitted]
+    return rows
+
+
+def warm_up() -> None:
+    """Compile what every study needs, or load it where it was compiled before.
+
+    The first time on a machine this takes seconds; whoever has something else to wait for meanwhile
+    (files, say) calls it in a thread of its own.
+    """
+    times = np.array([1.0, 2.0, 3.0])
+    bright_and_dim = np.outer([1e4, 30.0], np.exp(-0.1 * times)).astype(np.float32)
+    fit_rician_ml(bright_and_dim, times, np.ones(1), 1)
+
+
+def _fit_in_lanes(
+    rows: DecayRows,
+    signal: NDArray[np.float32],
+    echo_times_ms: NDArray[np.float64],
+    sigma: NDArray[np.float64],
+    n: int,
+) -> None:
+    times = echo_times_ms.astype(np.float32)
+    quotients = signal_rationals(n)
+    noise = LaneNoise(
+        n=n,
+        shortfall=quotients.shortfall,
+        excess=quotients.excess,
+        information=quotients.information,
+        per_z=1.0 / quotients.z_scale,
+        per_a=1.0 / quotients.a_scale,
+        least_power=float(no_signal_powers(len(times), n)[-1]),
+        least_first=no_signal_first(n),
+    )
+    max_rate = max_rate_per_ms(echo_times_ms)
 
     def work(block: slice) -> None:
-        fit_maximum_likelihood(
-            signal[block], echo_times_ms, sigma if len(sigma) == 1 else sigma[block],
-            n, max_rate, power, first,
-            tables.ratio, tables.kernel, tables.excess, tables.information,
-            tables.product_scale, tables.amplitude_scale,
-            rows.r2star_per_s[block], rows.s0[block], rows.r2star_se_per_s[block],
-            rows.reduced_chi2[block], rows.outcome[block],
-        )  # fmt: skip
+        fit_block(
+            signal[block], sigma if len(sigma) == 1 else sigma[block], rows.part(block), again=False
+        )
+        unsettled = np.flatnonzero(rows.outcome[block] == UNSETTLED) + block.start
+        if len(unsettled):
+            some = rows.copy_of(unsettled)
+            fit_block(
+                signal[unsettled], sigma if len(sigma) == 1 else sigma[unsettled], some, again=True
+            )
+            some.outcome[some.outcome == UNSETTLED] = LEFT_TO_ENGINE
+            rows.put(unsettled, some)
 
-    run_in_blocks(work, n_voxels)
-    return rows
+    def fit_block(
+        some: NDArray[np.float32], its_sigma: NDArray[np.float64], out: DecayRows, *, again: bool
+    ) -> None:
+        scratch = np.empty(len(times) * WIDTH, np.float32), np.empty(6 * WIDTH, np.float32)
+        fit_in_lanes(
+            some,
+            times,
+            its_sigma,
+            noise,
+            max_rate,
+            again,
+            *scratch,
+            out.r2star_per_s,
+            out.s0,
+            out.r2star_se_per_s,
+            out.reduced_chi2,
+            out.outcome,
+        )
+
+    run_in_blocks(work, len(signal))

@@ -37,3 +37,46 @@ class DecayRows:
             reduced_chi2=nan[3],
             outcome=np.zeros(n_voxels, dtype=np.uint8),
         )
+
+    def part(self, block: slice) -> DecayRows:
+        """A view of some rows: what is written to it is written here.
+
+        Parameters
+        ----------
+        block : slice
+            Which.
+
+        Returns
+        -------
+        DecayRows
+            Of those rows.
+        """
+        return DecayRows(**{name: getattr(self, name)[block] for name in self.__slots__})
+
+    def copy_of(self, which: NDArray[np.intp]) -> DecayRows:
+        """Copy the rows named.
+
+        Parameters
+        ----------
+        which : ndarray of intp, shape (R,)
+            Their numbers.
+
+        Returns
+        -------
+        DecayRows
+            R rows.
+        """
+        return DecayRows(**{name: getattr(self, name)[which] for name in self.__slots__})
+
+    def put(self, which: NDArray[np.intp], rows: DecayRows) -> None:
+        """Write rows over those named.
+
+        Parameters
+        ----------
+        which : ndarray of intp, shape (R,)
+            Their numbers.
+        rows : DecayRows
+            R rows.
+        """
+        for name in self.__slots__:
+            getattr(self, name)[which] = getattr(rows, name)

@@ -10,6 +10,7 @@ from __future__ import annotations
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import lru_cache
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,6 +20,18 @@ from liverfe.fit import signal
 N_INTERVALS = 256
 
 Array = NDArray[np.float64]
+
+
+class KernelTables(NamedTuple):
+    """What compiled code takes of `SignalTables`; the names are the same."""
+
+    n: int
+    ratio: Array
+    kernel: Array
+    excess: Array
+    information: Array
+    product_scale: float
+    amplitude_scale: float
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -51,6 +64,18 @@ class SignalTables:
     information: Array
     product_scale: float
     amplitude_scale: float
+
+    def for_kernels(self) -> KernelTables:
+        """What the kernels of maximum likelihood take, as compiled code can hold it."""
+        return KernelTables(
+            n=self.n,
+            ratio=self.ratio,
+            kernel=self.kernel,
+            excess=self.excess,
+            information=self.information,
+            product_scale=self.product_scale,
+            amplitude_scale=self.amplitude_scale,
+        )
 
 
 @lru_cache(maxsize=8)

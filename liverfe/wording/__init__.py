@@ -7,20 +7,24 @@ PDF; `digits` how many digits of a number a reader sees.
 
 from liverfe.wording.caution import CAUTION, CAUTION_SHORT
 from liverfe.wording.digits import NOT_KNOWN, shown
-from liverfe.wording.findings import FINDING_TABLE, FindingWording, Level
+from liverfe.wording.estimators import ESTIMATOR_REMARKS, ESTIMATOR_WORDS, EstimatorWording
+from liverfe.wording.findings import DOUBT_PHRASES, FINDING_TABLE, FindingWording, Level
 from liverfe.wording.report import REPORT, REPORT_COLUMNS, REPORT_PLURALS
-from liverfe.wording.study import ESTIMATOR_REMARKS, POOLED_LIVER
+from liverfe.wording.study import POOLED_LIVER
 
 __all__ = [
     "CAUTION",
     "CAUTION_SHORT",
+    "DOUBT_PHRASES",
     "ESTIMATOR_REMARKS",
+    "ESTIMATOR_WORDS",
     "FINDING_TABLE",
     "NOT_KNOWN",
     "POOLED_LIVER",
     "REPORT",
     "REPORT_COLUMNS",
     "REPORT_PLURALS",
+    "EstimatorWording",
     "FindingWording",
     "Level",
     "shown",

@@ -21,18 +21,6 @@ MAP_DESCRIPTIONS = {
 }
 """What each map holds, by its key; `{caution}` is filled in."""
 
-ESTIMATION_WORDS = {
-    "rician-ml": "Mono-exponential decay by Rician maximum likelihood in each voxel",
-    "first-moment": "Mono-exponential decay fitted with the expected Rician magnitude",
-    "second-moment": "Mono-exponential decay fitted to squared magnitudes with their noise offset",
-    "least-squares": "Mono-exponential decay by least squares, no noise correction",
-    "log-linear": "Straight line through the logarithm of the signal, no noise correction",
-    "weighted-log-linear": "Weighted straight line through the logarithm of the signal",
-    "truncation": "Mono-exponential decay by least squares on echoes above the noise floor",
-    "offset": "Mono-exponential decay with a constant offset by least squares",
-}
-"""How R2* was estimated, by `Method.estimator`."""
-
 STATUS_NAMES = {
     "OUTSIDE": "outside: no signal or not all echoes",
     "MEASURED": "measured",

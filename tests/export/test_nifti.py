@@ -10,7 +10,7 @@ import pytest
 from liverfe.export.nifti import nifti_gz_bytes
 from liverfe.grid import Grid
 from liverfe.maps import VoxelStatus
-from liverfe.study import RegionResult
+from liverfe.study import Method, RegionResult
 
 STEM = "sub-0123456789abcdef"
 FLOAT_MAPS = {
@@ -118,6 +118,16 @@ def test_sidecars_say_units_and_how_it_was_made(made, folder):
     assert t2star["Sources"] == [f"bids::{STEM}/anat/{STEM}_R2starmap.nii.gz"]
     for path in folder.glob("*.nii.gz"):
         assert path.with_name(path.name.replace(".nii.gz", ".json")).exists()
+
+
+def test_a_sidecar_names_the_papers_of_its_estimator(made):
+    for estimator, dois in (("autoregressive", ("mrm.25137", "mrm.27807")), ("log-linear", ())):
+        result = made.result(method=Method(estimator=estimator))
+        files = {f.path: f.content for f in made.files(result)}
+        sidecar = json.loads(files[f"maps/{STEM}_R2starmap.json"])
+        # Methods sheet 2.2: the estimator of 2015 and its erratum; the plain line has no paper.
+        assert [doi in sidecar.get("EstimationReference", "") for doi in dois] == [True] * len(dois)
+        assert ("EstimationReference" in sidecar) == bool(dois)
 
 
 def test_what_the_files_did_not_say_is_not_in_a_sidecar(made):

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
+from scipy import special
 
 from liverfe.fit import DecayRows, fit_rows
 
@@ -35,17 +36,34 @@ def magnitudes(amplitude: Array, rng: np.random.Generator, n: int = 1) -> NDArra
     return np.sqrt(power).astype(np.float32)
 
 
+def expected_mean(a: Array, n: int) -> Array:
+    """E[m] (Gudbjartsson 1995, Constantinides 1997) in closed form, without the package."""
+    if n == 1:
+        u = a**2 / 4
+        return np.sqrt(np.pi / 2) * ((1 + 2 * u) * special.i0e(u) + 2 * u * special.i1e(u))
+    beta = np.sqrt(2) * special.gamma(n + 0.5) / special.gamma(n)
+    small = np.minimum(a, 20.0)
+    closed = beta * special.hyp1f1(-0.5, n, -(small**2) / 2)
+    # 1F1 ends in overflow; its asymptotic series (A&S 13.5.1) has converged long before.
+    k = np.arange(8)
+    terms = special.poch(-0.5, k) * special.poch(0.5 - n, k) / special.factorial(k)
+    large = np.maximum(a, 20.0)
+    series = large * (terms * (2 / large[..., None] ** 2) ** k).sum(axis=-1)
+    return np.where(a < 20.0, closed, series)
+
+
 def fit(
     signal: ArrayLike,
     times_ms: ArrayLike,
     *,
     sigma: ArrayLike = SIGMA_ONE,
     n: int = 1,
-    estimator: str = "rician-ml",
+    model: str = "rician-ml",
+    usable: NDArray[np.bool_] | None = None,
 ) -> DecayRows:
     """`fit_rows` of one voxel or many."""
     rows = np.atleast_2d(np.asarray(signal)).astype(np.float32)
     return fit_rows(
         rows, np.asarray(times_ms, float), np.atleast_1d(np.asarray(sigma, float)), n,
-        estimator=estimator,
+        model=model, usable=usable,
     )  # fmt: skip

@@ -97,7 +97,7 @@ def known(sigma: float, sigma_map: np.ndarray | None = None) -> NoiseLevel:
 def test_every_estimator_keeps_each_voxel_at_its_place(estimator: str) -> None:
     rates = np.arange(1, 25, dtype=float).reshape(2, 3, 4) * 10
     magnitude = 1e4 * np.exp(-1e-3 * rates[..., None] * TWELVE_MS)
-    fitted = fit_r2star(stack_of(magnitude), known(1.0), estimator=estimator)
+    fitted = fit_r2star(stack_of(magnitude), known(1.0), model=estimator)
     assert fitted.estimator == estimator
     assert fitted.r2star_per_s == pytest.approx(rates, rel=2e-3)
     assert fitted.s0 == pytest.approx(np.full(rates.shape, 1e4), rel=2e-3)
@@ -109,10 +109,23 @@ def test_a_slice_with_a_missing_image_is_not_fitted(estimator: str) -> None:
     magnitude[:, :, 1, 4] = np.nan
     present = np.ones((12, 2), dtype=bool)
     present[4, 1] = False
-    fitted = fit_r2star(stack_of(magnitude, present), known(1.0), estimator=estimator)
+    fitted = fit_r2star(stack_of(magnitude, present), known(1.0), model=estimator)
     assert (fitted.outcome[:, :, 1] == FitOutcome.NOT_FITTED).all()
     assert np.isnan(fitted.r2star_per_s[:, :, 1]).all()
     assert (fitted.outcome[:, :, 0] == FitOutcome.CONVERGED).all()
+
+
+def test_a_voxel_can_be_fitted_without_an_echo_that_another_needs() -> None:
+    magnitude = np.broadcast_to(GOOD, (1, 2, 1, 12)).copy()
+    magnitude[0, 1, 0, 4] = np.nan
+    usable = np.isfinite(magnitude)
+    for model in ("rician-ml", "log-linear"):
+        fitted = fit_r2star(stack_of(magnitude), known(0.01), model=model, usable=usable)
+        assert fitted.r2star_per_s == pytest.approx(np.full((1, 2, 1), 80.0), rel=1e-3)
+        without = fit_r2star(stack_of(magnitude), known(0.01), model=model)
+        assert np.isnan(without.r2star_per_s[0]).ravel().tolist() == [False, True]
+    with pytest.raises(ValueError, match="usable has shape"):
+        fit_r2star(stack_of(magnitude), known(0.01), usable=usable[..., :11])
 
 
 def test_each_voxel_is_fitted_with_its_own_sigma() -> None:
@@ -132,7 +145,7 @@ def test_the_fit_refuses_one_echo_and_unknown_estimators() -> None:
     with pytest.raises(ValueError, match="two echoes"):
         fit_r2star(one, known(1.0))
     with pytest.raises(ValueError, match="unknown estimator 'magic'"):
-        fit_r2star(stack_of(np.ones((1, 1, 1, 12))), known(1.0), estimator="magic")
+        fit_r2star(stack_of(np.ones((1, 1, 1, 12))), known(1.0), model="magic")
 
 
 def test_a_fit_is_locked_and_of_one_shape() -> None:
@@ -149,6 +162,6 @@ def test_a_fit_is_locked_and_of_one_shape() -> None:
 
 @pytest.mark.parametrize("estimator", ESTIMATORS)
 def test_a_voxel_of_zeros_is_a_number_for_no_estimator(estimator: str) -> None:
-    fitted = fit(np.zeros(12), TWELVE_MS, estimator=estimator)
+    fitted = fit(np.zeros(12), TWELVE_MS, model=estimator)
     assert not fitted.r2star_per_s[0] > 0
     assert fitted.outcome[0] != FitOutcome.CONVERGED

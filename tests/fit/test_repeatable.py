@@ -9,7 +9,7 @@ import numba
 import numpy as np
 import pytest
 
-from liverfe.fit import DecayRows, blocks, fit_rows
+from liverfe.fit import ESTIMATORS, DecayRows, blocks, fit_rows
 from tests.fit.decays import SIGMA_ONE, TWELVE_MS, decay, magnitudes
 
 FIELDS = ("r2star_per_s", "s0", "r2star_se_per_s", "reduced_chi2", "outcome")
@@ -73,12 +73,12 @@ def test_a_spawned_process_gives_the_same_bits(signal: np.ndarray, expected: Dec
         np.testing.assert_array_equal(getattr(fitted, name), getattr(expected, name)[few])
 
 
-@pytest.mark.parametrize("estimator", ["first-moment", "least-squares", "offset", "truncation"])
+@pytest.mark.parametrize("estimator", ESTIMATORS[1:])
 def test_the_other_estimators_do_not_hang_on_blocks_either(
     signal: np.ndarray, estimator: str, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     some = signal[:3000]
-    whole = fit_rows(some, TWELVE_MS, SIGMA_ONE, 1, estimator=estimator)
+    whole = fit_rows(some, TWELVE_MS, SIGMA_ONE, 1, model=estimator)
     monkeypatch.setattr(blocks, "_BLOCK", 701)
     monkeypatch.setattr(numba.config, "NUMBA_NUM_THREADS", 3)
-    assert_same(fit_rows(some, TWELVE_MS, SIGMA_ONE, 1, estimator=estimator), whole)
+    assert_same(fit_rows(some, TWELVE_MS, SIGMA_ONE, 1, model=estimator), whole)

@@ -115,6 +115,6 @@ def test_real_scans_give_the_r2star_of_their_readme(
     sigma = float(np.median(stack.magnitude[mask])) / 1000.0
     noise = NoiseLevel(sigma=sigma, n_channels=1, method="given", relative_sd=0.0)
     for estimator in ("log-linear", ESTIMATORS[0]):
-        fit = fit_r2star(stack, noise, estimator=estimator)
+        fit = fit_r2star(stack, noise, model=estimator)
         median = float(np.median(fit.r2star_per_s[mask]))
         assert median == pytest.approx(r2star_per_s, abs=tolerance), estimator
