@@ -11,6 +11,7 @@ from liverfe.fit.bounds import (
     r2star_bound_per_s,
     r2star_shift_per_s,
     reportable_range,
+    s0_relative_bound,
     upper_limit_per_s,
 )
 from liverfe.fit.decay import DecayFit, FitOutcome
@@ -53,6 +54,7 @@ __all__ = [
     "r2star_bound_per_s",
     "r2star_shift_per_s",
     "reportable_range",
+    "s0_relative_bound",
     "shaped_decay",
     "upper_limit_per_s",
     "warm_up",

@@ -52,6 +52,36 @@ def r2star_bound_per_s(
     return np.where(resolvable, 1e3 * np.sqrt(f00 / np.where(resolvable, det, 1.0)), np.inf)
 
 
+def s0_relative_bound(
+    echo_times_ms: ArrayLike,
+    r2star_per_s: ArrayLike,
+    s0: ArrayLike,
+    sigma: ArrayLike,
+    *,
+    n: int = 1,
+) -> Array:
+    """Cramér-Rao bound of the standard error of S0 as a share of it, R2* being unknown too.
+
+    Parameters
+    ----------
+    echo_times_ms : array_like, shape (E,)
+        Echo times in ms.
+    r2star_per_s, s0, sigma : array_like
+        R2* in 1/s, signal at echo time zero and noise SD per channel (signal units); broadcast.
+    n : int
+        Effective number of channels.
+
+    Returns
+    -------
+    ndarray of float64
+        Standard error of ln S0; inf where the data hold no information.
+    """
+    f00, f01, f11, _ = _weights(echo_times_ms, r2star_per_s, s0, sigma, n)
+    det = f00 * f11 - f01**2
+    resolvable = det > 1e-14 * f00 * f11
+    return np.where(resolvable, np.sqrt(f11 / np.where(resolvable, det, 1.0)), np.inf)
+
+
 def r2star_shift_per_s(
     echo_times_ms: ArrayLike,
     r2star_per_s: ArrayLike,
@@ -218,6 +248,66 @@ def upper_limit_per_s(
         echo_times_ms, s0 / sigma, relative=relative, n=n, sigma_relative_sd=sigma_relative_sd
     )
     return float("nan") if found is None else found[1]
+
+
+def clear_amplitude(n: int = 1, *, share: float = 0.5) -> float:
+    """Amplitude from which an echo tells of the signal rather than of the noise.
+
+    There its information about the amplitude is this share of what Gaussian noise would leave. The
+    rule is for amplitudes that a fit predicts: chosen by the magnitude itself, echoes that noise
+    has lifted would be kept and those it has lowered dropped.
+
+    Parameters
+    ----------
+    n : int
+        Effective number of channels.
+    share : float
+        Between 0 and 1.
+
+    Returns
+    -------
+    float
+        In sigma; 0.96 for a half and one channel.
+    """
+    tables = signal_tables(n)
+    u = np.linspace(0.0, 1.0, len(tables.information), endpoint=False)
+    reached = int(np.argmax(tables.information[:, 0] >= share))
+    part = np.interp(share, tables.information[reached - 1 : reached + 1, 0], (0.0, 1.0))
+    at = u[reached - 1] + part * (u[reached] - u[reached - 1])
+    return float(tables.amplitude_scale * at / (1.0 - at))
+
+
+def n_clear_echoes(
+    echo_times_ms: ArrayLike,
+    r2star_per_s: ArrayLike,
+    s0: ArrayLike,
+    sigma: ArrayLike,
+    *,
+    n: int = 1,
+) -> NDArray[np.intp]:
+    """Count the echoes in which a decay has signal, by the amplitude that it predicts.
+
+    Parameters
+    ----------
+    echo_times_ms : array_like, shape (E,)
+        Echo times in ms, ascending.
+    r2star_per_s, s0, sigma : array_like
+        R2* in 1/s, at least 0, signal at echo time zero and noise SD per channel (signal units);
+        broadcast.
+    n : int
+        Effective number of channels.
+
+    Returns
+    -------
+    ndarray of int
+        How many echoes reach `clear_amplitude`; 0 where `s0` or R2* is no number.
+    """
+    rate, level, noise = (np.asarray(x, dtype=np.float64) for x in (r2star_per_s, s0, sigma))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        headroom = np.log(level / (clear_amplitude(n) * noise))
+        until_ms = np.where(headroom > 0.0, 1e3 * headroom / rate, -1.0)
+    times = np.asarray(echo_times_ms, dtype=np.float64)
+    return np.searchsorted(times, np.nan_to_num(until_ms, nan=-1.0), side="right")
 
 
 def _weights(

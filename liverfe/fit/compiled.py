@@ -1,6 +1,6 @@
-"""`compiled`: kernels are compiled once for each version and kind of processor, and kept on disk.
+"""`compiled`: kernels are compiled once for each version and kind of processor, and kept.
 
-numba keeps compiled code beside the source, and is followed in where. What its own cache leaves
+numba keeps compiled code in a folder of its choice, and goes on doing so. What its own way leaves
 open is closed here:
 
 - It asks whether the file of a kernel has changed. But functions and constants of other files are
@@ -8,30 +8,28 @@ open is closed here:
   file of this room counts.
 - Where no folder can be written it refuses to import. Here the kernel is compiled in each process.
 - A full disk, or a file that was cut off, ends the fit. Here such a file counts as not there.
-- Index and code are two files, which processes that compile at once can mix up. Here it is one.
+- It keeps an index beside the code, and processes that compile at once can mix the two up. Here
+  code says itself what it is, and is believed only if that fits, to the last bit.
 """
 
 from __future__ import annotations
 
 import hashlib
-import os
+import importlib.resources
 import pickle
-import secrets
-import sys
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from contextlib import suppress
 from functools import cache
-from pathlib import Path
+from importlib.resources.abc import Traversable
 from typing import Any
 
-import llvmlite
 import numba
-from numba.core.caching import FunctionCache
+from numba.core.caching import CompileResultCacheImpl, FunctionCache
 from numba.core.dispatcher import Dispatcher
 from numba.core.serialize import dumps
+from numba.core.sigutils import normalize_signature
 
-_N_DIGEST = 32
-"""Bytes of SHA-256 before the code itself."""
+_ROOM = "liverfe.fit"
 
 
 def compiled(**options: Any) -> Callable[[Callable[..., Any]], Any]:
@@ -54,7 +52,7 @@ def compiled(**options: Any) -> Callable[[Callable[..., Any]], Any]:
         # RuntimeError where it knows no folder to write to: then nothing is kept.
         if isinstance(kernel, Dispatcher):
             with suppress(RuntimeError):
-                kernel._cache = _KernelCache(function)
+                kernel._cache = _KernelCache(function)  # type: ignore[attr-defined]
         return kernel
 
     return decorate
@@ -63,53 +61,58 @@ def compiled(**options: Any) -> Callable[[Callable[..., Any]], Any]:
 @cache
 def room_stamp() -> str:
     """Digest of everything that compiled code of this room depends on, beside the processor."""
-    digest = hashlib.sha256(f"{numba.__version__} {llvmlite.__version__}".encode())
-    room = Path(__file__).parent
-    for path in sorted(room.rglob("*.py")):
-        digest.update(str(path.relative_to(room)).encode())
-        digest.update(hashlib.sha256(path.read_bytes()).digest())
+    digest = hashlib.sha256(numba.__version__.encode())
+    for name, content in sorted(_sources(importlib.resources.files(_ROOM))):
+        digest.update(f"{name} {hashlib.sha256(content).hexdigest()}\n".encode())
     return digest.hexdigest()
 
 
-class _KernelCache(FunctionCache):  # type: ignore[misc]  # numba has no types
-    """One file for each signature and processor; whatever is wrong with it, it is not there."""
+def _sources(folder: Traversable, above: str = "") -> Iterator[tuple[str, bytes]]:
+    for entry in folder.iterdir():
+        if entry.is_dir():
+            yield from _sources(entry, f"{above}{entry.name}/")
+        elif entry.name.endswith(".py"):
+            yield above + entry.name, entry.read_bytes()
+
+
+class _Sealed(CompileResultCacheImpl):
+    """Puts a seal on compiled code: what it was made from and for, and a digest of its bytes."""
+
+    def reduce(self, cres: Any) -> Any:
+        """Pack compiled code with its seal."""
+        packed = dumps(super().reduce(cres))
+        return _origin(cres.library.codegen), hashlib.sha256(packed).digest(), packed
+
+    def rebuild(self, target_context: Any, payload: Any) -> Any:
+        """Unpack compiled code, or raise where its seal does not fit."""
+        origin, digest, packed = payload
+        if origin != _origin(target_context.codegen()):
+            raise ValueError("compiled from other sources or for another processor")
+        if digest != hashlib.sha256(packed).digest():
+            raise ValueError("damaged")
+        return super().rebuild(target_context, pickle.loads(packed))
+
+
+def _origin(codegen: Any) -> tuple[Any, ...]:
+    return room_stamp(), *codegen.magic_tuple()
+
+
+class _KernelCache(FunctionCache):
+    """Whatever is wrong with what is kept, it is not there, and is kept anew."""
+
+    _impl_class = _Sealed
 
     def load_overload(self, sig: Any, target_context: Any) -> Any:
-        """Take compiled code from disk; None where there is none that fits."""
-        target_context.refresh()
+        """Take compiled code; None where there is none that fits."""
+        with suppress(Exception):  # a damaged file raises many kinds; all mean the same here
+            found = super().load_overload(sig, target_context)
+            if found is None or tuple(found.signature.args) == tuple(normalize_signature(sig)[0]):
+                return found
         with suppress(Exception):
-            stored = self._path(sig, target_context.codegen()).read_bytes()
-            digest, packed = stored[:_N_DIGEST], memoryview(stored)[_N_DIGEST:]
-            if hashlib.sha256(packed).digest() == digest:
-                return self._impl.rebuild(target_context, pickle.loads(packed))
+            self.flush()
         return None
 
     def save_overload(self, sig: Any, data: Any) -> None:
-        """Keep compiled code; if that fails the next process compiles it again."""
+        """Keep compiled code; where that fails the next process compiles it again."""
         with suppress(Exception):
-            if not self._impl.check_cachable(data):
-                return
-            packed = dumps(self._impl.reduce(data))
-            path = self._path(sig, data.codegen)
-            path.parent.mkdir(parents=True, exist_ok=True)
-            for old in path.parent.glob(f"{self._stem}.*.kernel"):
-                if f".{room_stamp()[:16]}." not in old.name:
-                    old.unlink()
-            part = path.with_suffix(f".{secrets.token_hex(8)}.part")
-            try:
-                part.write_bytes(hashlib.sha256(packed).digest() + packed)
-                os.replace(part, path)
-            finally:
-                part.unlink(missing_ok=True)
-
-    @property
-    def _stem(self) -> str:
-        function = self._py_func
-        return f"{Path(function.__code__.co_filename).stem}.{function.__name__}"
-
-    def _path(self, sig: Any, codegen: Any) -> Path:
-        # The signature by its text, the processor by name and abilities, and the function's code.
-        key = hashlib.sha256(repr(self._index_key(sig, codegen)).encode()).hexdigest()
-        python = sys.implementation.cache_tag
-        name = f"{self._stem}.{python}.{room_stamp()[:16]}.{key[:16]}.kernel"
-        return Path(self.cache_path) / name
+            super().save_overload(sig, data)

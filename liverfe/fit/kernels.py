@@ -40,7 +40,7 @@ _STOP = 1e-10
 """A step that can gain less than this is the last one: it is 1.4e-5 standard errors long."""
 _USABLE = 2.0
 """Echoes start the fit while their noise-corrected amplitude is above this many sigma."""
-_UNRESOLVED, _FAST = 1.0, 0.5
+UNRESOLVED, FAST = 1.0, 0.5
 """A decay whose standard error exceeds R2* itself and whose R2* times the echo spacing is above one
 half is too fast to see."""
 _NEARLY_NOTHING = 1e-5
@@ -255,7 +255,7 @@ def standard_errors(work: Workspace, se: Array) -> float:
 @inner
 def is_unresolved(rate: float, se: float, times: Array) -> bool:
     """Whether a decay is over between two echoes and its rate as uncertain as itself."""
-    return rate * (times[1] - times[0]) > _FAST and not se < _UNRESOLVED * rate
+    return rate * (times[1] - times[0]) > FAST and not se < UNRESOLVED * rate
 
 
 @inner

@@ -22,9 +22,10 @@ from liverfe.fit.kernels import (
     AT_LOWER_BOUND,
     AT_UPPER_BOUND,
     CONVERGED,
+    FAST,
     NO_SIGNAL,
     NOT_FITTED,
-    is_unresolved,
+    UNRESOLVED,
 )
 from liverfe.fit.lane_functions import exp, fourth_degree, rough_log, sixth_degree
 from liverfe.fit.lanes import (
@@ -40,7 +41,6 @@ from liverfe.fit.lanes import (
     store,
     where_above,
 )
-from liverfe.fit.likelihood_kernels import inner
 
 Array = NDArray[np.float64]
 Array32 = NDArray[np.float32]
@@ -249,20 +249,53 @@ def _judge(m_all: Array32, times: Array32, noise: LaneNoise, log_a: Any, rate: A
     return root(f00 / larger(det, everywhere(1e-30))), chi2
 
 
+@inner_lanes
+def _write(
+    ends: Array32, times: Array32, max_rate: float, log_a: Any, rate: Any, settled: Any,
+    moving: Any, silent: Any, valid: Any, errors: Any, chi2: Any,
+) -> None:  # fmt: skip
+    """Rows of `ends`: R2* in 1/s, S0 in sigma, standard error in 1/s, misfit, outcome.
+
+    Of a voxel that still moves: the rate in 1/ms, and ln A in place of the standard error.
+    """
+    zero, half, nothing = everywhere(0.0), everywhere(0.5), everywhere(np.nan)
+    too_fast = everywhere(AT_UPPER_BOUND)
+    fast = rate * everywhere(times[1] - times[0])
+    vague = where_above(errors, everywhere(UNRESOLVED) * rate, fast, zero)
+    outcome = where_above(
+        rate, everywhere(_BETWEEN), everywhere(CONVERGED), everywhere(AT_LOWER_BOUND)
+    )
+    outcome = where_above(vague, everywhere(FAST), too_fast, outcome)
+    outcome = where_above(everywhere(max_rate), rate, outcome, too_fast)
+    shown = where_above(too_fast, outcome, settled, zero)
+    unfinished = where_above(moving, half, everywhere(UNSETTLED), everywhere(LEFT_TO_ENGINE))
+    outcome = where_above(settled, half, outcome, unfinished)
+    outcome = where_above(silent, half, everywhere(NO_SIGNAL), outcome)
+    outcome = where_above(valid, half, outcome, everywhere(NOT_FITTED))
+    per_s, dof = everywhere(1e3), everywhere(len(times) - 2.0)
+    misfit = where_above(dof, half, chi2 / dof, nothing)
+    s0 = exp(fused(rate, everywhere(times[0]), log_a))
+    store(ends, 0, where_above(shown, half, per_s * rate, where_above(moving, half, rate, nothing)))
+    store(ends, WIDTH, where_above(shown, half, s0, nothing))
+    kept = where_above(moving, half, log_a, nothing)
+    store(ends, 2 * WIDTH, where_above(shown, half, per_s * errors, kept))
+    store(ends, 3 * WIDTH, where_above(shown, half, misfit, nothing))
+    store(ends, 4 * WIDTH, outcome)
+
+
 @compiled(nogil=True, error_model="numpy", no_cfunc_wrapper=True)
 def fit_in_lanes(
     signal: Array32, times: Array32, sigma: Array, noise: LaneNoise, max_rate: float,
     again: bool, m_all: Array32, ends: Array32, rate_out: Array32, s0_out: Array32,
     se_out: Array32, chi2_out: Array32, outcome_out: NDArray[np.uint8],
 ) -> None:  # fmt: skip
-    """Fit each row of `signal`, or go on where it stood (`again`).
+    """Fit each row of `signal`, or go on where it stood (`again`); every output row is written.
 
     A row that has not settled gets the outcome UNSETTLED, and where it stands (R2* in 1/ms, ln of
-    the amplitude at the first echo) in `rate_out` and `s0_out`; what cannot be fitted here gets
-    LEFT_TO_ENGINE. `m_all` (16 E numbers) and `ends` (6 x 16) are scratch.
+    the amplitude at the first echo) in `rate_out` and `se_out`; what cannot be fitted here gets
+    LEFT_TO_ENGINE. `m_all` (16 E numbers) and `ends` (5 x 16) are scratch.
     """
-    n_voxels, n_echoes = signal.shape
-    two, four, eight = everywhere(2.0), everywhere(4.0), everywhere(8.0)
+    n_voxels = len(signal)
     for first_row in range(0, n_voxels, WIDTH):
         n_here = min(WIDTH, n_voxels - first_row)
         _take_in(signal, sigma, first_row, n_here, m_all)
@@ -272,50 +305,18 @@ def fit_in_lanes(
             most_steps = MORE_STEPS
             for lane in range(WIDTH):
                 ends[lane] = rate_out[first_row + min(lane, n_here - 1)]
-                ends[WIDTH + lane] = s0_out[first_row + min(lane, n_here - 1)]
+                ends[WIDTH + lane] = se_out[first_row + min(lane, n_here - 1)]
             rate, log_a = load(ends, 0), load(ends, WIDTH)
         log_a, rate, settled, moving = _climb(
             m_all, times, noise, max_rate, most_steps, log_a, rate, moving
         )
         errors, chi2 = _judge(m_all, times, noise, log_a, rate)
-        store(ends, 0, rate)
-        store(ends, WIDTH, log_a)
-        store(ends, 2 * WIDTH, errors)
-        store(ends, 3 * WIDTH, chi2)
-        store(ends, 5 * WIDTH, exp(fused(rate, everywhere(times[0]), log_a)))
-        store(ends, 4 * WIDTH, fused(two, moving, settled) + fused(eight, silent, four * valid))
+        _write(ends, times, max_rate, log_a, rate, settled, moving, silent, valid, errors, chi2)
         for lane in range(n_here):
-            v = first_row + lane
-            r, se = ends[lane], ends[2 * WIDTH + lane]
-            outcome_out[v] = _outcome(int(ends[4 * WIDTH + lane]), r, max_rate)
-            if outcome_out[v] == CONVERGED and is_unresolved(r, se, times):
-                outcome_out[v] = AT_UPPER_BOUND
-            if outcome_out[v] == UNSETTLED:
-                rate_out[v] = r
-                s0_out[v] = ends[WIDTH + lane]
-            elif outcome_out[v] == CONVERGED or outcome_out[v] == AT_LOWER_BOUND:
-                rate_out[v] = np.float32(1e3) * r
-                s0_out[v] = ends[5 * WIDTH + lane] * np.float32(
-                    sigma[v] if len(sigma) > 1 else sigma[0]
-                )
-                se_out[v] = np.float32(1e3) * se
-                if n_echoes > 2:
-                    chi2_out[v] = ends[3 * WIDTH + lane] / np.float32(n_echoes - 2)
-            else:
-                rate_out[v], s0_out[v] = np.float32(np.nan), np.float32(np.nan)
-
-
-@inner
-def _outcome(state: int, rate: float, max_rate: float) -> int:
-    """Outcome from the sum of 1 (settled), 2 (moving), 4 (all magnitudes) and 8 (no signal)."""
-    if state & 4 == 0:
-        return NOT_FITTED
-    if state & 8:
-        return NO_SIGNAL
-    if state & 2:
-        return UNSETTLED
-    if state & 1 == 0:
-        return LEFT_TO_ENGINE
-    if rate >= np.float32(max_rate):
-        return AT_UPPER_BOUND
-    return CONVERGED if rate > _BETWEEN else AT_LOWER_BOUND
+            rate_out[first_row + lane] = ends[lane]
+            se_out[first_row + lane] = ends[2 * WIDTH + lane]
+            chi2_out[first_row + lane] = ends[3 * WIDTH + lane]
+            outcome_out[first_row + lane] = np.uint8(ends[4 * WIDTH + lane])
+        for lane in range(n_here):
+            scale = np.float32(sigma[first_row + lane] if len(sigma) > 1 else sigma[0])
+            s0_out[first_row + lane] = scale * ends[WIDTH + lane]

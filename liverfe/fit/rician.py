@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from liverfe.fit.blocks import run_in_blocks
 from liverfe.fit.decay import FitOutcome
-from liverfe.fit.engine import fit_decays, no_signal_first, no_signal_powers
+from liverfe.fit.engine import LikelihoodFits, fit_decays, no_signal_first, no_signal_powers
 from liverfe.fit.lane_kernels import LEFT_TO_ENGINE, UNSETTLED, LaneNoise, fit_in_lanes
 from liverfe.fit.lanes import WIDTH
 from liverfe.fit.rationals import signal_rationals
@@ -51,24 +51,28 @@ def fit_rician_ml(
     ----------
     Sijbers 1998 (maximum likelihood for Rician magnitudes); Gudbjartsson 1995; Constantinides 1997.
     """
-    rows = DecayRows.empty(len(signal))
     if usable is None:
+        rows = DecayRows.unwritten(len(signal))
         _fit_in_lanes(rows, signal, echo_times_ms, sigma, n)
         left = np.flatnonzero(rows.outcome == LEFT_TO_ENGINE)
     else:
+        rows = DecayRows.empty(len(signal))
         left = np.arange(len(signal))
     if len(left):
         model = mono_exponential(echo_times_ms)
-        fits = fit_decays(signal, model, sigma, n, usable=usable, rows=left)
-        rows.outcome[left] = fits.outcome
-        for values in (rows.r2star_per_s, rows.s0):
-            values[left] = np.nan
-        fitted = np.isin(fits.outcome, (FitOutcome.CONVERGED, FitOutcome.AT_LOWER_BOUND))
-        shown = left[fitted]
-        rows.r2star_per_s[shown] = fits.parameters[fitted, 1]
-        rows.s0[shown] = np.exp(fits.parameters[fitted, 0])
-        rows.r2star_se_per_s[shown] = fits.standard_errors[fitted, 1]
-        rows.reduced_chi2[shown] = fits.reduced_chi2[fitted]
+        rows.put(left, _rows_of(fit_decays(signal, model, sigma, n, usable=usable, rows=left)))
+    return rows
+
+
+def _rows_of(fits: LikelihoodFits) -> DecayRows:
+    """The engine's fits of one exponential as rows: numbers only where there is a decay."""
+    rows = DecayRows.empty(len(fits.outcome))
+    rows.outcome[:] = fits.outcome
+    shown = np.isin(fits.outcome, (FitOutcome.CONVERGED, FitOutcome.AT_LOWER_BOUND))
+    rows.r2star_per_s[shown] = fits.parameters[shown, 1]
+    rows.s0[shown] = np.exp(fits.parameters[shown, 0])
+    rows.r2star_se_per_s[shown] = fits.standard_errors[shown, 1]
+    rows.reduced_chi2[shown] = fits.reduced_chi2[shown]
     return rows
 
 
@@ -120,7 +124,7 @@ def _fit_in_lanes(
     def fit_block(
         some: NDArray[np.float32], its_sigma: NDArray[np.float64], out: DecayRows, *, again: bool
     ) -> None:
-        scratch = np.empty(len(times) * WIDTH, np.float32), np.empty(6 * WIDTH, np.float32)
+        scratch = np.empty(len(times) * WIDTH, np.float32), np.empty(5 * WIDTH, np.float32)
         fit_in_lanes(
             some,
             times,

@@ -38,6 +38,17 @@ class DecayRows:
             outcome=np.zeros(n_voxels, dtype=np.uint8),
         )
 
+    @classmethod
+    def unwritten(cls, n_voxels: int) -> DecayRows:
+        """Rows that hold anything, for a fit that writes every one."""
+        return cls(
+            r2star_per_s=np.empty(n_voxels, dtype=np.float32),
+            s0=np.empty(n_voxels, dtype=np.float32),
+            r2star_se_per_s=np.empty(n_voxels, dtype=np.float32),
+            reduced_chi2=np.empty(n_voxels, dtype=np.float32),
+            outcome=np.empty(n_voxels, dtype=np.uint8),
+        )
+
     def part(self, block: slice) -> DecayRows:
         """A view of some rows: what is written to it is written here.
 

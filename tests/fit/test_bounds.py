@@ -7,9 +7,12 @@ import pytest
 from scipy import optimize
 
 from liverfe.fit import (
+    clear_amplitude,
+    n_clear_echoes,
     r2star_bound_per_s,
     r2star_shift_per_s,
     reportable_range,
+    s0_relative_bound,
     upper_limit_per_s,
 )
 from tests.fit.decays import PROTOCOLS_MS, TWELVE_MS, Array, decay, fit, magnitudes
@@ -58,6 +61,14 @@ def test_bound_at_high_snr_is_the_gaussian_closed_form(n: int) -> None:
         gaussian = np.sqrt(see / (see * stt - ste**2)) * 3.0 / 3e5
         found = r2star_bound_per_s(times, 200.0, 3e5, 3.0, n=n)
         assert found == pytest.approx(gaussian, rel=1e-5)
+
+
+def test_bound_of_s0_at_high_snr_is_the_gaussian_closed_form() -> None:
+    # Inverse of the information matrix of S0 exp(-R t) in (S0, R), Gaussian noise (methods 4.1).
+    t, e = TWELVE_MS * 1e-3, np.exp(-0.2 * TWELVE_MS)
+    gradient = np.stack([e, -t * 1e5 * e])
+    expected = np.sqrt(np.linalg.inv(gradient @ gradient.T)[0, 0]) / 1e5
+    assert s0_relative_bound(TWELVE_MS, 200.0, 1e5, 1.0) == pytest.approx(expected, rel=1e-5)
 
 
 def test_bound_broadcasts_and_is_infinite_without_information() -> None:
@@ -169,3 +180,31 @@ def test_every_rate_inside_the_range_is_known_to_the_share(snr: float) -> None:
         inside: Array = np.geomspace(low, high, 500)
         share = r2star_bound_per_s(times, inside, snr, 1.0) / inside
         assert share.max() < 0.1 * 1.003
+
+
+# Methods sheet 4.1 [computed]: information of a Rician magnitude, in units of a Gaussian one's.
+INFORMATION = {0.5: 0.201696, 1.0: 0.521447, 1.5: 0.737547, 2.0: 0.852632, 3.0: 0.940151}
+
+
+@pytest.mark.parametrize("a", INFORMATION)
+def test_an_echo_is_clear_from_the_amplitude_that_holds_the_share(a: float) -> None:
+    assert clear_amplitude(1, share=INFORMATION[a]) == pytest.approx(a, rel=2e-4)
+
+
+def test_more_channels_need_more_signal_to_be_clear() -> None:
+    found = [clear_amplitude(n) for n in (1, 2, 8, 32)]
+    assert found == sorted(found)
+    assert found[0] == pytest.approx(0.966, abs=0.005)  # the same table, interpolated at a half
+
+
+def test_clear_echoes_are_counted_by_the_predicted_amplitude() -> None:
+    """Against the amplitudes written out; nothing and no decay at the ends."""
+    rate, level = np.array([0.0, 100.0, 500.0, 3000.0, 100.0, np.nan]), np.array([50.0] * 6)
+    level[4] = 0.5
+    amplitudes = decay(level, rate, TWELVE_MS)
+    expected = (amplitudes >= clear_amplitude()).sum(axis=1)
+    found = n_clear_echoes(TWELVE_MS, rate, level, 1.0)
+    assert found.tolist() == expected.tolist()
+    assert found[0] == 12
+    assert found[3] == 1
+    assert found[4] == 0
