@@ -180,6 +180,7 @@ def _noise(noise: NoiseLevel) -> Json:
     return {
         "sigma": rounded(noise.sigma),
         "n_channels": int(noise.n_channels),
+        "channels_between": list(noise.channels_between) if noise.channels_between else None,
         "method": noise.method,
         "relative_sd": rounded(noise.relative_sd),
         "varies": noise.sigma_map is not None,
@@ -270,6 +271,7 @@ def _r2star(summary: RegionSummary) -> Json:
         "iqr": rounded(r2star.iqr),
         "mean": rounded(r2star.mean),
         "sd": rounded(r2star.sd),
+        "sd_biological": rounded(r2star.sd_biological),
         "qualifier": r2star.qualifier,
         "before_trimming": rounded(r2star.before_trimming),
     }
@@ -303,4 +305,6 @@ def _decay(decay: RegionDecay) -> Json:
         "signal_low": _rounded_all(decay.signal_low),
         "signal_high": _rounded_all(decay.signal_high),
         "noise_floor": rounded(decay.noise_floor),
+        "residual": None if decay.residual is None else _rounded_all(decay.residual),
+        "residual_se": None if decay.residual_se is None else _rounded_all(decay.residual_se),
     }

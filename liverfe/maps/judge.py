@@ -6,7 +6,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from liverfe.echoes import EchoStack
-from liverfe.fit import DecayFit, FitOutcome, upper_limit_per_s
+from liverfe.fit import DecayFit, FitOutcome, n_clear_echoes, upper_limit_per_s
 from liverfe.maps.decay_maps import DecayMaps, VoxelStatus
 from liverfe.noise import NoiseLevel
 from liverfe.units import t2star_ms_from_r2star_per_s
@@ -41,7 +41,8 @@ def judge(
     noise : NoiseLevel
         Sigma and channels.
     voxel_relative_se : float
-        The upper limit lies where the standard error bound reaches this share of R2*.
+        The upper limit lies where the standard error bound reaches this share of R2*. A voxel with
+        signal in fewer than two echoes is over it too.
 
     Returns
     -------
@@ -53,8 +54,11 @@ def judge(
     sigma = noise.sigma if noise.sigma_map is None else noise.sigma_map[measured]
     limit = _limits(stack, noise, fit.s0[measured] / sigma, voxel_relative_se)
     rate = fit.r2star_per_s[measured]
+    # Signal in one echo only bounds R2* from below and no more.
+    echoes = n_clear_echoes(stack.echo_times_ms, rate, fit.s0[measured], sigma, n=noise.n_channels)
+    over = (rate > limit) | (echoes < 2)
     # NaN limit: too little signal to measure anything; that is a failure, not a fast decay.
-    judged = np.where(rate > limit, VoxelStatus.OVER_LIMIT, VoxelStatus.MEASURED)
+    judged = np.where(over, VoxelStatus.OVER_LIMIT, VoxelStatus.MEASURED)
     status[measured] = np.where(np.isnan(limit), VoxelStatus.FAILED, judged)
     return _maps(fit, stack, status)
 

@@ -15,10 +15,11 @@ from liverfe.echoes import Acquisition, EchoStack, Subject, settle_field_strengt
 from liverfe.errors import UsageError
 from liverfe.grid import Grid
 from liverfe.phantom.abdomen import StructureMap, draw_abdomen
+from liverfe.phantom.clean import CleanImages
 from liverfe.phantom.drawn import draw_regions
 from liverfe.phantom.geometry import grid_of
 from liverfe.phantom.recipe import Recipe
-from liverfe.phantom.signal import amplitude, gamma_r2star_per_s, received, stored_counts
+from liverfe.phantom.signal import gamma_r2star_per_s, received, stored_counts
 
 __all__ = ["Phantom", "make_phantom", "scan_again"]
 
@@ -82,13 +83,16 @@ class Phantom:
 
     def clean_magnitude(self) -> NDArray[np.float32]:
         """Compute the noise-free magnitude; float32, shape (X, Y, Z, E)."""
-        times = self.recipe.echo_times_ms
-        return np.stack([amplitude(self.s0, self.r2star_per_s, time) for time in times], axis=-1)
+        clean = CleanImages(self.recipe, self.structures, self.s0, self.r2star_per_s)
+        return np.stack([clean.magnitude(e) for e in range(clean.n_echoes)], axis=-1)
 
     def clean_complex(self) -> NDArray[np.complex64]:
         """Compute the noise-free complex signal; complex64, shape (X, Y, Z, E)."""
-        phase = np.stack([_phase(self.off_resonance_hz, t) for t in self.recipe.echo_times_ms], -1)
-        return np.asarray(self.clean_magnitude() * np.exp(1j * phase), dtype=np.complex64)
+        clean = CleanImages(self.recipe, self.structures, self.s0, self.r2star_per_s)
+        phase = [clean.phase_rad(e, self.off_resonance_hz) for e in range(clean.n_echoes)]
+        return np.asarray(
+            self.clean_magnitude() * np.exp(1j * np.stack(phase, axis=-1)), dtype=np.complex64
+        )
 
     def stored_signal(self) -> NDArray[np.float32]:
         """Compute what the stored counts mean: count x slope; float32, shape (X, Y, Z, E)."""
@@ -176,7 +180,8 @@ def make_phantom(recipe: Recipe, rng: np.random.Generator, *, with_phase: bool =
     off_resonance_hz = np.float32(recipe.scanner.off_resonance_hz) * np.broadcast_to(
         ramp, grid.shape
     )
-    images = _scan(recipe, s0, r2star_per_s, off_resonance_hz if with_phase else None, noise_rng)
+    clean = CleanImages(recipe, structures, s0, r2star_per_s)
+    images = _scan(clean, off_resonance_hz if with_phase else None, noise_rng)
     return Phantom(
         recipe=recipe,
         grid=grid,
@@ -207,7 +212,8 @@ def scan_again(phantom: Phantom, rng: np.random.Generator) -> Phantom:
         With phase where the first one has it.
     """
     off_resonance_hz = None if phantom.phase_rad is None else phantom.off_resonance_hz
-    images = _scan(phantom.recipe, phantom.s0, phantom.r2star_per_s, off_resonance_hz, rng)
+    clean = CleanImages(phantom.recipe, phantom.structures, phantom.s0, phantom.r2star_per_s)
+    images = _scan(clean, off_resonance_hz, rng)
     return dataclasses.replace(
         phantom, magnitude=images.magnitude, stored=images.stored, phase_rad=images.phase_rad
     )
@@ -239,34 +245,31 @@ class _Images(NamedTuple):
 
 
 def _scan(
-    recipe: Recipe,
-    s0: NDArray[np.float32],
-    r2star_per_s: NDArray[np.float32],
-    off_resonance_hz: NDArray[np.float32] | None,
-    rng: np.random.Generator,
+    clean: CleanImages, off_resonance_hz: NDArray[np.float32] | None, rng: np.random.Generator
 ) -> _Images:
     """Receive all echoes; the phase too where a field offset is given."""
-    shape = (*s0.shape, len(recipe.echo_times_ms))
+    recipe = clean.recipe
+    shape = (*clean.s0.shape, clean.n_echoes)
     magnitude = np.empty(shape, dtype=np.float32)
     stored = np.empty(shape, dtype=np.uint16)
     phase_rad = None if off_resonance_hz is None else np.empty(shape, dtype=np.float32)
-    for e, time_ms in enumerate(recipe.echo_times_ms):
-        clean = amplitude(s0, r2star_per_s, time_ms)
+    for e in range(clean.n_echoes):
         image, summed = received(
-            clean, sigma=recipe.noise.sigma, n_channels=recipe.noise.n_channels, rng=rng
+            clean.magnitude(e),
+            sigma=recipe.noise.sigma,
+            n_channels=recipe.noise.n_channels,
+            rng=rng,
         )
+        if recipe.effects.saturation is not None:
+            image = np.minimum(image, np.float32(recipe.effects.saturation))
         slope = recipe.storage.slope_per_echo[e]
         _refuse_overflow(recipe, float(image.max()) / slope)
         magnitude[..., e] = image
         stored[..., e] = stored_counts(image, slope)
         if phase_rad is not None and off_resonance_hz is not None:
-            turned = _phase(off_resonance_hz, time_ms) + np.angle(summed)
+            turned = clean.phase_rad(e, off_resonance_hz) + np.angle(summed)
             phase_rad[..., e] = np.angle(np.exp(1j * turned))
     return _Images(magnitude, stored, phase_rad)
-
-
-def _phase(off_resonance_hz: NDArray[np.float32], time_ms: float) -> NDArray[np.float32]:
-    return np.asarray(off_resonance_hz * np.float32(2e-3 * np.pi * time_ms))
 
 
 def _refuse_overflow(recipe: Recipe, largest_count: float) -> None:

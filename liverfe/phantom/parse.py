@@ -9,6 +9,7 @@ from datetime import date
 
 from liverfe.errors import UsageError
 from liverfe.phantom.abdomen import STRUCTURES, TISSUES
+from liverfe.phantom.parse_effects import effects_plan
 from liverfe.phantom.reading import RecipeTable
 from liverfe.phantom.recipe import (
     AnatomyPlan,
@@ -81,8 +82,13 @@ def parse_recipe(text: str, *, name: str) -> Recipe:
         anatomy=_anatomy(top.table("anatomy")),
         tissues=tuple(tissues.values()),
         regions=_regions(top.tables("regions")),
+        effects=effects_plan(top.table("effects", default={}), len(echo_times_ms)),
     )
     top.close()
+    if recipe.scanner.true_field_t is None and any(t.fat_fraction for t in recipe.tissues):
+        raise top.refuse(
+            "scanner.imaging_frequency_mhz", "fat needs a field: state it, or field_strength_t"
+        )
     return recipe
 
 
@@ -187,6 +193,7 @@ def _tissue(table: RecipeTable, name: str) -> TissuePlan:
         r2star_per_s=table.number("r2star_per_s", above=0.0),
         heterogeneity_cv=table.number("heterogeneity_cv", at_least=0.0, below=2.0, default=0.0),
         s0=table.number("s0", above=0.0),
+        fat_fraction=table.number("fat_fraction", at_least=0.0, below=1.0, default=0.0),
     )
     table.close()
     return plan

@@ -121,6 +121,24 @@ class RecipeTable:
                 raise self.refuse(f"{key}[{i}]", f"must be above {above:g}, not {value:g}")
         return checked
 
+    def optional_integer(self, key: str, *, low: int, high: int) -> int | None:
+        """Read a whole number from `low` to `high`, or None where the key is absent."""
+        return self.integer(key, low=low, high=high) if key in self else self._take(key, None)
+
+    def integers(self, key: str, *, low: int, high: int, default: Any = None) -> tuple[int, ...]:
+        """Read a non-empty list of whole numbers from `low` to `high`."""
+        values = self._take(key, _MISSING if default is None else default)
+        if values is default:
+            return tuple(values)
+        if not isinstance(values, list) or not values:
+            raise self.refuse(key, f"must be a list of whole numbers, not {values!r}")
+        for i, value in enumerate(values):
+            if isinstance(value, bool) or not isinstance(value, int) or not low <= value <= high:
+                raise self.refuse(
+                    f"{key}[{i}]", f"must be a whole number from {low} to {high}, not {value!r}"
+                )
+        return tuple(values)
+
     def texts(self, key: str) -> tuple[str, ...]:
         """Read a non-empty list of texts."""
         values = self._take(key, _MISSING)
@@ -135,9 +153,9 @@ class RecipeTable:
             raise self.refuse(key, f"must be a table, not {value!r}")
         return RecipeTable(value, f"{self._where}{key}.")
 
-    def tables(self, key: str) -> tuple[RecipeTable, ...]:
+    def tables(self, key: str, *, default: Any = None) -> tuple[RecipeTable, ...]:
         """Open each table of the array of tables below `key`."""
-        values = self._take(key, _MISSING)
+        values = self._take(key, _MISSING if default is None else default)
         if not isinstance(values, list) or not all(isinstance(v, Mapping) for v in values):
             raise self.refuse(key, "must be an array of tables: [[...]]")
         return tuple(

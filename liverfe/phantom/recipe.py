@@ -5,8 +5,11 @@ from __future__ import annotations
 import dataclasses
 import hashlib
 import json
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from datetime import date
+
+from liverfe.phantom.effects import EffectsPlan
+from liverfe.units import field_t_from_frequency_mhz
 
 __all__ = [
     "AnatomyPlan",
@@ -41,6 +44,13 @@ class ScannerPlan:
     repetition_time_ms: float
     flip_angle_deg: float
     off_resonance_hz: float
+
+    @property
+    def true_field_t(self) -> float | None:
+        """The field that the imaging frequency means, else the stated one, in T."""
+        if self.imaging_frequency_mhz is not None:
+            return field_t_from_frequency_mhz(self.imaging_frequency_mhz)
+        return self.field_strength_t
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -143,12 +153,15 @@ class TissuePlan:
         Coefficient of variation of R2* from voxel to voxel, gamma distributed; 0 is uniform.
     s0 : float
         Signal at echo time zero.
+    fat_fraction : float
+        Share of the signal that is fat, which oscillates against water.
     """
 
     name: str
     r2star_per_s: float
     heterogeneity_cv: float
     s0: float
+    fat_fraction: float = 0.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -200,6 +213,8 @@ class Recipe:
         Every tissue of that body.
     regions : tuple of RegionPlan
         Regions that come with the study; label 1, 2, ... in this order.
+    effects : EffectsPlan
+        What went wrong in the scan; by default nothing.
     """
 
     name: str
@@ -215,6 +230,7 @@ class Recipe:
     anatomy: AnatomyPlan
     tissues: tuple[TissuePlan, ...]
     regions: tuple[RegionPlan, ...]
+    effects: EffectsPlan = field(default_factory=EffectsPlan)
 
     def with_seed(self, seed: int) -> Recipe:
         """Return the same recipe with another seed."""
@@ -246,5 +262,13 @@ class Recipe:
     @property
     def digest(self) -> str:
         """SHA-256 of everything in the recipe, the seed included, as hexadecimal text."""
-        plain = json.dumps(dataclasses.asdict(self), sort_keys=True, default=str)
+        everything = dataclasses.asdict(self)
+        # What a recipe does not ask for is no part of it: one written before an effect was known
+        # stays the same study.
+        if self.effects == EffectsPlan():
+            del everything["effects"]
+        for tissue in everything["tissues"]:
+            if not tissue["fat_fraction"]:
+                del tissue["fat_fraction"]
+        plain = json.dumps(everything, sort_keys=True, default=str)
         return hashlib.sha256(plain.encode()).hexdigest()

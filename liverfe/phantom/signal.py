@@ -1,7 +1,7 @@
 """The noise-free signal and the receiver's noise, written for the phantom alone.
 
 The estimator has equations of its own and neither borrows from the other, so that a wrong one
-cannot confirm itself. Fat, coils and motion would enter here.
+cannot confirm itself. What else a scan does to the signal stands in `effects`.
 """
 
 from __future__ import annotations

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import dataclasses
 from pathlib import Path
 from typing import Any
 
@@ -9,8 +10,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from liverfe.phantom.drawn import outline_document
+from liverfe.phantom.effects import EffectsPlan, true_times_ms
 from liverfe.phantom.make import Phantom
 from liverfe.phantom.nifti import save_volume, write_json
+from liverfe.phantom.recipe import Recipe
 from liverfe.units import ml_from_mm3
 
 __all__ = ["truth_document", "write_regions", "write_truth"]
@@ -34,10 +37,11 @@ def truth_document(phantom: Phantom) -> dict[str, Any]:
     -------
     dict
         Ready for JSON: the recipe's name, digest and seed, echo times, field, noise, storage, and
-        for each region its size and the median, mean and SD of true R2* and S0.
+        for each region its size and the median, mean and SD of true R2* and S0; ``effects`` where
+        the recipe has any.
     """
     recipe = phantom.recipe
-    return {
+    document = {
         "schema": 1,
         "kind": "liverfe phantom truth",
         "synthetic": True,
@@ -58,6 +62,19 @@ def truth_document(phantom: Phantom) -> dict[str, Any]:
             _region(phantom, label, plan.name) for label, plan in enumerate(recipe.regions, start=1)
         ],
     }
+    effects = _effects(recipe)
+    return document | ({"effects": effects} if effects else {})
+
+
+def _effects(recipe: Recipe) -> dict[str, Any]:
+    """What went wrong in the scan, and the fat of each tissue; empty if nothing."""
+    plan, nothing = dataclasses.asdict(recipe.effects), dataclasses.asdict(EffectsPlan())
+    found = {key: value for key, value in plan.items() if value != nothing[key]}
+    if "order" in found or "lost_echo" in found:
+        times = true_times_ms(recipe.echo_times_ms, recipe.effects)
+        found["true_echo_times_ms"] = list(times)
+    fat = {tissue.name: tissue.fat_fraction for tissue in recipe.tissues if tissue.fat_fraction}
+    return found | ({"fat_fraction": fat} if fat else {})
 
 
 def _region(phantom: Phantom, label: int, name: str) -> dict[str, Any]:

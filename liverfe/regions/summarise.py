@@ -2,40 +2,32 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from dataclasses import replace
+
 import numpy as np
 from numpy.typing import NDArray
 
 from liverfe.echoes import EchoStack
 from liverfe.errors import Finding, StudyRefused
-from liverfe.fit import (
-    DecayFit,
-    amplitude,
-    expected_magnitude,
-    noise_floor,
-    r2star_bound_per_s,
-)
+from liverfe.fit import DecayFit, amplitude, expected_magnitude, noise_floor
 from liverfe.noise import NoiseLevel
-from liverfe.regions.counts import VoxelCounts, censored_sample, sort_voxels, trimmed_voxels
-from liverfe.regions.limits import upper_limit
-from liverfe.regions.model_checks import check_decay, misfit_findings
-from liverfe.regions.statistics import censored_quantile
+from liverfe.regions.counts import censored_sample, sort_voxels, trimmed_voxels
+from liverfe.regions.doubts import DecayCheck, check_decay, examine_decay
+from liverfe.regions.joint import JointFit, fit_jointly
+from liverfe.regions.limits import UpperLimit, upper_limit
 from liverfe.regions.summary import R2StarSummary, RegionDecay, RegionSummary, ReportableLimits
-from liverfe.regions.value import RegionRules, region_value
+from liverfe.regions.value import RegionRules, joint_value, region_value
+from liverfe.regions.voxel_findings import (
+    check_echoes,
+    count_findings,
+    share_finding,
+    uneven_iron,
+)
 
 Mask = NDArray[np.bool_]
 
-_TOLD_CENSORED = 0.05
-"""From this share of voxels over the limit on, a reader is told."""
-_TOLD_FAILED = 0.10
 _MOST_FAILED = 0.50
-_TOLD_TRIMMED = 0.15
-_FEW_VOXELS = 30
-"""Fewer usable voxels than this are told."""
-_UNEVEN = 0.40
-"""Spread of R2* within a region, as a share of its median, from which a reader is told; livers of
-one kind spread by 10 to 30 %."""
-_TENTHS_APART = 2.563
-"""Between the tenth and the ninetieth percentile lie this many SD of a normal distribution."""
 _CURVE_POINTS = 120
 
 
@@ -50,12 +42,15 @@ def summarise_region(
     *,
     source: str = "",
     findings: tuple[Finding, ...] = (),
+    lic_mg_per_g: Callable[[float], float] | None = None,
 ) -> RegionSummary:
     """Summarise the voxels of a region.
 
     The value is the median of all voxels that are not outliers, voxels over the limit counting at
     the upper end and voxels under it at the lower: it stands while less than
-    ``rules.censored_share`` of them are over the limit, else the region is ``>`` the limit.
+    ``rules.censored_share`` of them are over the limit, else the region is ``>`` the limit. Sigma
+    is the region's own where it varies over the image. Where no voxel can tell R2* to 30 %
+    anywhere, one fit of all decays stands in, if it may (`liverfe.regions.joint`).
 
     Parameters
     ----------
@@ -75,6 +70,8 @@ def summarise_region(
         As in `Region`.
     findings : tuple of Finding
         What is known of the region already.
+    lic_mg_per_g : callable or None
+        From R2* to LIC, so that a doubt can state its effect on both.
 
     Returns
     -------
@@ -86,20 +83,22 @@ def summarise_region(
     StudyRefused
         ``signal-rises``, ``saturated``, ``most-failed``, ``no-tissue-signal``, ``signal-too-low``.
     """
+    noise = noise_in(mask, noise)
     decay_findings = () if organ == "background" else check_decay(name, mask, stack, noise)
-    limit, s0, limit_findings = upper_limit(
-        name, mask, stack, noise, fit, voxel_relative_se=rules.voxel_relative_se
-    )
-    counts = sort_voxels(mask, fit, limit)
+    reach, joint = _reach(name, mask, stack, noise, fit, rules)
+    limit, s0 = reach.r2star_per_s, reach.s0
+    counts = sort_voxels(mask, stack, noise, fit, limit)
     n_voxels, n_failed = int(mask.sum()), int(counts.failed.sum())
     if n_failed > _MOST_FAILED * n_voxels:
-        raise StudyRefused(_share_finding("most-failed", name, n_failed, n_voxels))
-    mads = rules.trim_mads if rules.trim == "mad" else None
+        raise StudyRefused(share_finding("most-failed", name, n_failed, n_voxels))
+    mads = rules.trim_mads if rules.trim == "mad" and joint is None else None
     trimmed = trimmed_voxels(fit, counts, mads=mads)
     used = counts.measured & ~trimmed
     sample = censored_sample(fit, used, counts)
-    r2star, low_limit = region_value(
-        sample, used, counts, stack, noise, fit, rules, limit=limit, s0=s0
+    r2star, low_limit = (
+        region_value(sample, used, counts, stack, noise, fit, rules, limit=limit, s0=s0)
+        if joint is None
+        else joint_value(joint, sample, fit.r2star_per_s[used].astype(np.float64))
     )
     chi2 = fit.reduced_chi2[used]
     median_chi2 = float(np.median(chi2)) if used.any() and np.isfinite(chi2).all() else None
@@ -108,17 +107,19 @@ def summarise_region(
         raise StudyRefused(Finding.of("echoes-out-of-order", region=name), *decay_findings)
     summary_findings = (
         *findings,
-        *decay_findings,
-        *limit_findings,
-        *_count_findings(name, counts, used, trimmed, n_voxels, limit, r2star),
+        *reach.findings,
+        *count_findings(name, counts, used, trimmed, n_voxels, limit, r2star),
+        *check_echoes(name, used, stack, noise, fit),
     )
-    if r2star.qualifier == "=" and organ == "liver":
-        summary_findings += _uneven_iron(name, sample, stack, noise, r2star.value, s0)
-    if r2star.qualifier == "=" or stack.n_echoes == 2:
-        summary_findings += misfit_findings(
-            name, used | counts.over, stack, noise,
-            r2star_per_s=r2star.value, s0=s0, median_chi2=median_chi2,
+    if r2star.qualifier == "=" and organ == "liver" and joint is None:
+        summary_findings += uneven_iron(name, sample, stack, noise, r2star.value, s0)
+    check = DecayCheck(findings=decay_findings)
+    if organ != "background" and (r2star.qualifier != ">" or stack.n_echoes == 2):
+        check = examine_decay(
+            name, used | counts.over, stack, noise, fit, known=decay_findings,
+            tells=r2star.qualifier == "=", lic=lic_mg_per_g if organ == "liver" else None,
         )  # fmt: skip
+    summary_findings += check.findings
     if organ == "background":
         # Noise is what it is drawn for: that it does not decay is no doubt about the study.
         summary_findings = ()
@@ -142,77 +143,59 @@ def summarise_region(
         limits=ReportableLimits(
             low_r2star_per_s=low_limit, high_r2star_per_s=limit, s0=s0, sigma=noise.sigma
         ),
-        decay=_decay(mask, used, stack, noise, r2star, s0),
+        decay=_decay(mask, used, stack, noise, r2star, s0, check),
         median_reduced_chi2=median_chi2,
         findings=summary_findings,
     )
 
 
-def _count_findings(
-    name: str,
-    counts: VoxelCounts,
-    used: Mask,
-    trimmed: Mask,
-    n_voxels: int,
-    limit: float,
-    r2star: R2StarSummary,
-) -> tuple[Finding, ...]:
-    found = []
-    over, failed = int(counts.over.sum()), int(counts.failed.sum())
-    if r2star.qualifier == ">" or over > _TOLD_CENSORED * n_voxels:
-        consequence = (
-            "The value is stated as over the limit."
-            if r2star.qualifier == ">"
-            else "The median stands, since they are the smaller part."
-        )
-        found.append(
-            Finding.of(
-                "censored-over-limit", region=name, share=f"{100 * over / n_voxels:.0f}",
-                limit=f"{limit:.0f}", consequence=consequence,
-            )
-        )  # fmt: skip
-    if r2star.qualifier == "<":
-        found.append(Finding.of("censored-under-limit", region=name, limit=f"{r2star.value:.1f}"))
-    if failed > _TOLD_FAILED * n_voxels:
-        found.append(_share_finding("many-failed", name, failed, n_voxels))
-    n_trimmed = int(trimmed.sum())
-    if n_trimmed > _TOLD_TRIMMED * n_voxels and r2star.before_trimming is not None:
-        found.append(
-            Finding.of(
-                "many-trimmed", region=name, share=f"{100 * n_trimmed / n_voxels:.0f}",
-                before=f"{r2star.before_trimming:.4g}", after=f"{r2star.value:.4g}",
-            )
-        )  # fmt: skip
-    said = int(used.sum()) + over + int(counts.under.sum())
-    if said < _FEW_VOXELS:
-        found.append(Finding.of("few-voxels", region=name, n=said, wanted=_FEW_VOXELS))
-    return tuple(found)
+def noise_in(mask: Mask, noise: NoiseLevel) -> NoiseLevel:
+    """Noise as a region has it: its sigma is the median of the map there, if there is a map.
+
+    Parameters
+    ----------
+    mask : ndarray of bool, shape (X, Y, Z)
+        The region's voxels.
+    noise : NoiseLevel
+        Of the whole image.
+
+    Returns
+    -------
+    NoiseLevel
+        The same without a map.
+    """
+    if noise.sigma_map is None:
+        return noise
+    return replace(noise, sigma=float(np.median(noise.sigma_map[mask])))
 
 
-def _uneven_iron(
+def _reach(
     name: str,
-    sample: NDArray[np.float64],
+    mask: Mask,
     stack: EchoStack,
     noise: NoiseLevel,
-    value: float,
-    s0: float,
-) -> tuple[Finding, ...]:
-    """Tell where voxels differ by far more than noise explains, outliers or not."""
-    low, high = censored_quantile(sample, 0.1), censored_quantile(sample, 0.9)
-    if not (np.isfinite(low) and np.isfinite(high)):
-        return ()  # censored voxels are told already
-    bound = float(
-        r2star_bound_per_s(stack.echo_times_ms, value, s0, noise.sigma, n=noise.n_channels)
+    fit: DecayFit,
+    rules: RegionRules,
+) -> tuple[UpperLimit, JointFit | None]:
+    """How far the region can be measured: by its voxels, or by all of them in one fit."""
+    reach = upper_limit(name, mask, stack, noise, fit, voxel_relative_se=rules.voxel_relative_se)
+    if not reach.is_too_coarse:
+        return reach, None
+    joint = fit_jointly(
+        mask, stack, noise, fit, level=rules.interval, relative_se=rules.voxel_relative_se
     )
-    spread = (high - low) / _TENTHS_APART
-    if spread**2 - bound**2 <= (_UNEVEN * value) ** 2:
-        return ()
-    told = {"low": f"{low:.0f}", "high": f"{high:.0f}", "median": f"{value:.0f}"}
-    return (Finding.of("uneven-iron", region=name, **told),)
-
-
-def _share_finding(code: str, name: str, part: int, whole: int) -> Finding:
-    return Finding.of(code, region=name, share=f"{100 * part / whole:.0f}")
+    if joint is None:
+        told = {"snr": f"{reach.s0 / noise.sigma:.1f}"}
+        told["relative"] = f"{100 * rules.voxel_relative_se:g}"
+        raise StudyRefused(Finding.of("signal-too-low", region=name, **told))
+    found = Finding.of(
+        "measured-jointly", region=name, snr=f"{joint.s0 / noise.sigma:.1f}",
+        best=f"{100 * joint.best:.0f}", n=joint.n_voxels,
+    )  # fmt: skip
+    together = UpperLimit(
+        r2star_per_s=joint.limit_per_s, s0=joint.s0, best=joint.best, findings=(found,)
+    )
+    return together, joint
 
 
 def _decay(
@@ -222,6 +205,7 @@ def _decay(
     noise: NoiseLevel,
     r2star: R2StarSummary,
     s0: float,
+    check: DecayCheck,
 ) -> RegionDecay:
     """Signal against echo time; of all voxels where none could be used."""
     signal = stack.magnitude[used if used.any() else mask]
@@ -236,4 +220,6 @@ def _decay(
         curve_times_ms=times,
         curve=noise.sigma * expected_magnitude(a, noise.n_channels),
         noise_floor=noise.sigma * noise_floor(noise.n_channels),
+        residual=check.residual,
+        residual_se=check.residual_se,
     )

@@ -43,15 +43,19 @@ class R2StarSummary:
     value : float
         The region's statistic; where censored, the limit.
     statistic : str
-        Its name: ``median``.
+        Its name: ``median``, or ``joint`` where all decays were fitted together.
     low, high : float or None
-        Measurement interval; None on the open side of a censored value.
+        Interval of the median of these very voxels, the errors of noise and of sigma in it; None on
+        the open side of a censored value.
     iqr, mean, sd : float or None
         Spread and mean of the used voxels; None where censored voxels make them unknowable.
     qualifier : {'=', '>', '<'}
         Whether the value is measured, or the limit it lies beyond.
     before_trimming : float or None
         The same statistic before trimming.
+    sd_biological : float or None
+        Spread of R2* between the voxels that noise does not explain: 0 where noise explains all,
+        None where censored voxels make it unknowable.
     """
 
     value: float
@@ -63,6 +67,7 @@ class R2StarSummary:
     sd: float | None
     qualifier: Qualifier
     before_trimming: float | None
+    sd_biological: float | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -79,6 +84,9 @@ class RegionDecay:
         Expected magnitude (noise floor included) at the region's median R2* and S0.
     noise_floor : float
         Expected magnitude where there is no signal, signal units.
+    residual, residual_se : ndarray of float64, shape (E,), or None
+        Mean over voxels of signal minus that voxel's own fit, in units of its noise SD, and the
+        standard error of that mean; None where no fit leaves any (two echoes, no decay in reach).
     """
 
     echo_times_ms: NDArray[np.float64]
@@ -88,6 +96,8 @@ class RegionDecay:
     curve_times_ms: NDArray[np.float64]
     curve: NDArray[np.float64]
     noise_floor: float
+    residual: NDArray[np.float64] | None = None
+    residual_se: NDArray[np.float64] | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)

@@ -84,7 +84,7 @@ def _limits(region: RegionResult, result: StudyResult) -> str:
     if region.iron is not None:
         low, high = (shown(value, "lic_mg_per_g") for value in region.iron.limits_mg_per_g)
         lic = REPORT["limits_lic"].format(low=low, high=high)
-    return REPORT["limits_text"].format(
+    text = REPORT["limits_text"].format(
         name=region_name(region.summary),
         low=shown(limits.low_r2star_per_s, "r2star_per_s"),
         high=shown(limits.high_r2star_per_s, "r2star_per_s"),
@@ -93,6 +93,17 @@ def _limits(region: RegionResult, result: StudyResult) -> str:
         sigma=shown(limits.sigma, "signal"),
         share=percent(result.method.voxel_relative_se),
     )
+    return " ".join([text, *_spread(region)])
+
+
+def _spread(region: RegionResult) -> list[str]:
+    """Spread of R2* beyond noise, where it is known."""
+    sd = region.summary.r2star.sd_biological
+    if sd is None:
+        return []
+    if sd == 0.0:
+        return [REPORT["spread_of_noise"]]
+    return [REPORT["spread_beyond_noise"].format(sd=shown(sd, "r2star_per_s"))]
 
 
 def _method(result: StudyResult) -> list[str]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from liverfe.regions import RegionSummary
+from liverfe.regions import RegionDecay, RegionSummary
 from liverfe.report.decay_plot import draw_decay
 from liverfe.report.phrases import region_name, region_shown
 from liverfe.report.pictures import draw_map, draw_slice, scale_of_field
@@ -102,9 +102,11 @@ def _map(scene: Scene, field_strength_t: float | None, summary: RegionSummary | 
 def _decay(summary: RegionSummary) -> Figure:
     decay = summary.decay
     is_limit = summary.r2star.qualifier != "="
+    has_residuals = decay.residual is not None and not is_limit
     return Figure(
         svg=draw_decay(decay, is_limit=is_limit),
-        caption=REPORT["caption_decay"].format(name=region_name(summary)),
+        caption=REPORT["caption_decay"].format(name=region_name(summary))
+        + (REPORT["caption_residuals"] if has_residuals else ""),
         alt=REPORT["alt_decay"].format(
             name=region_name(summary),
             count=len(decay.echo_times_ms),
@@ -114,5 +116,15 @@ def _decay(summary: RegionSummary) -> Figure:
             end=shown(float(decay.signal[-1]), "signal"),
             curve=REPORT["alt_curve_limit" if is_limit else "alt_curve_fit"],
             floor=shown(decay.noise_floor, "signal"),
-        ),
+        )
+        + (_residuals_in_words(decay) if has_residuals else ""),
+    )
+
+
+def _residuals_in_words(decay: RegionDecay) -> str:
+    assert decay.residual is not None
+    sizes = [abs(float(size)) for size in decay.residual]
+    echo = sizes.index(max(sizes))
+    return REPORT["alt_residuals"].format(
+        largest=f"{decay.residual[echo]:+.2f}", te=f"{decay.echo_times_ms[echo]:.4g}"
     )

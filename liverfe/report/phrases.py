@@ -30,18 +30,20 @@ def all_findings(result: StudyResult) -> tuple[Finding, ...]:
     ----------
     result : StudyResult
         Its own findings, and those of its regions and iron estimates, should one of them not
-        have been passed on: a caution must never get lost on its way to page 1.
+        have been passed on: a caution must never get lost on its way to page 1. What several
+        regions share is told once in the result, so a code that is told there is not repeated.
 
     Returns
     -------
     tuple of Finding
         In the order of the result within each level.
     """
-    found = list(result.findings)
+    told = {finding.code for finding in result.findings}
+    own: list[Finding] = []
     for region in result.regions:
-        found += region.summary.findings
-        found += region.iron.findings if region.iron is not None else ()
-    once = dict.fromkeys(found)
+        own += region.summary.findings
+        own += region.iron.findings if region.iron is not None else ()
+    once = dict.fromkeys([*result.findings, *(f for f in own if f.code not in told)])
     return tuple(sorted(once, key=lambda finding: _LEVELS.index(finding.level)))
 
 

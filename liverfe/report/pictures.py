@@ -126,17 +126,23 @@ def _paint(scene: Scene, scale_per_s: tuple[float, float]) -> NDArray[np.uint8]:
     colours[..., 3] = measured | (status == VoxelStatus.UNDER_LIMIT)
     fine, over = (
         np.repeat(np.repeat(plane, _FINE, axis=0), _FINE, axis=1)
-        for plane in (colours, status == VoxelStatus.OVER_LIMIT)
+        for plane in (_bytes(colours), status == VoxelStatus.OVER_LIMIT)
     )
     period = max(2 * _FINE, round(fine.shape[1] / _STRIPES_ACROSS))
-    fine[over] = _hatch(over.shape[0], over.shape[1], period)[over]
-    return np.asarray(np.rint(fine * 255), dtype=np.uint8)
+    row, column = np.nonzero(over)
+    fine[over] = _hatch(row + column, period)
+    return fine
 
 
-def _hatch(rows: int, columns: int, period: int) -> NDArray[np.float64]:
-    diagonal = (np.arange(rows)[:, None] + np.arange(columns)[None, :]) % period
-    dark, pale = ((*tone, 1.0) for tone in _OVER_STRIPES)
-    return np.where((diagonal < period // 2)[..., None], dark, pale)
+def _bytes(shares: ArrayLike) -> NDArray[np.uint8]:
+    """Turn 0 to 1 into 0 to 255, voxel by voxel: the fine picture has 36 times as many."""
+    return np.asarray(np.rint(np.asarray(shares) * 255), dtype=np.uint8)
+
+
+def _hatch(diagonal: NDArray[np.intp], period: int) -> NDArray[np.uint8]:
+    """Give the colours of the hatch at pixels, by row plus column."""
+    tones = _bytes([(*tone, 1.0) for tone in _OVER_STRIPES])
+    return tones[(diagonal % period >= period // 2).astype(np.intp)]
 
 
 def _image_size(view: SliceView) -> tuple[float, float]:
@@ -191,7 +197,8 @@ def _outline(axes: Axes, scene: Scene) -> None:
         return
     path = voxel_edges(np.asarray(scene.mask, dtype=bool), scene.view)
     for colour, width in ((INK, 1.9), ("white", 0.8)):
-        axes.add_patch(PathPatch(path, fill=False, ec=colour, lw=width, capstyle="projecting"))
+        # Not add_patch: it would look for the extent of each of hundreds of edges.
+        axes.add_artist(PathPatch(path, fill=False, ec=colour, lw=width, capstyle="projecting"))
 
 
 def voxel_edges(mask: NDArray[np.bool_], view: SliceView) -> Path:
@@ -243,8 +250,8 @@ def _colour_bar(figure: Figure, scale_per_s: tuple[float, float]) -> None:
     bar.tick_params(length=2.0, pad=1.5)
     key = _row(figure, 0.02, 0.14)
     key.imshow(
-        _hatch(30, 60, 15), extent=(0.0, 0.07, 0.1, 0.9), aspect="auto",
-        interpolation="none",
+        _hatch(np.add.outer(np.arange(30), np.arange(60)), 15),
+        extent=(0.0, 0.07, 0.1, 0.9), aspect="auto", interpolation="none",
     )  # fmt: skip
     _key_text(key, REPORT["legend_over"])
 

@@ -18,14 +18,16 @@ from liverfe.calibration import (
 )
 from liverfe.echoes import EchoStack
 from liverfe.errors import Finding, StudyRefused
-from liverfe.fit import DecayFit, fit_r2star
+from liverfe.fit import DecayFit, estimator_named, fit_r2star
 from liverfe.maps import judge, repaint
 from liverfe.noise import NoiseLevel, estimate_noise
 from liverfe.outlines import Region, is_whole_liver
 from liverfe.regions import RegionRules, RegionSummary, body_mask, place, summarise_region
+from liverfe.study.decay_likelihood import decay_likelihood
 from liverfe.study.method import Method
 from liverfe.study.noise_doubts import noise_findings, refuse_unbounded
 from liverfe.study.result import RegionResult, StudyResult
+from liverfe.study.shared_doubts import region_findings
 from liverfe.wording import ESTIMATOR_REMARKS, POOLED_LIVER
 
 _NEGATIVE_SHARE = 0.01
@@ -75,11 +77,12 @@ def assess_study(
         imaging_frequency_mhz=stack.acquisition.imaging_frequency_mhz,
     )
     noise = estimate_noise(
-        stack, method=method.noise, sigma=method.sigma, n_channels=method.n_channels
-    )
-    fit = fit_r2star(stack, noise, estimator=method.estimator)
+        stack, method=method.noise, sigma=method.sigma, n_channels=method.n_channels,
+        likelihood=decay_likelihood,
+    )  # fmt: skip
+    fit = fit_r2star(stack, noise, model=method.estimator)
     maps = judge(fit, stack, noise, voxel_relative_se=method.voxel_relative_se)
-    summaries = _summarise(stack, regions, method, noise, fit)
+    summaries = _summarise(stack, regions, method, noise, fit, curve)
     refuse_unbounded(summaries, stack, noise)
     for summary in summaries:
         maps = repaint(
@@ -94,7 +97,7 @@ def assess_study(
         *_study_findings(stack, summaries, headline, method, noise),
         *curve_findings,
         *(fit_model_findings(curve, method.estimator) if curve else ()),
-        *(finding for s in summaries for finding in s.findings),
+        *region_findings(summaries, headline),
         *(finding for r in results if r.iron for finding in r.iron.findings),
     )
     return StudyResult(
@@ -146,6 +149,7 @@ def _summarise(
     method: Method,
     noise: NoiseLevel,
     fit: DecayFit,
+    curve: CalibrationCurve | None,
 ) -> tuple[RegionSummary, ...]:
     """All regions, and the pooled liver regions where no single one is the liver's."""
     rules = RegionRules(
@@ -155,6 +159,7 @@ def _summarise(
         interval=method.interval,
         censored_share=method.censored_share,
     )
+    lic = curve.lic_mg_per_g if curve else None
     body = body_mask(fit) if regions else np.zeros(stack.grid.shape, dtype=bool)
     placed = [(region, *place(region, stack, body)) for region in regions]
     findings = {region.name: found for region, _, found in placed}
@@ -167,7 +172,7 @@ def _summarise(
     summaries = [
         summarise_region(
             region.name, region.organ, mask, stack, noise, fit, rules,
-            source=region.source, findings=findings[region.name],
+            source=region.source, findings=findings[region.name], lic_mg_per_g=lic,
         )
         for region, mask, _ in placed
     ]  # fmt: skip
@@ -176,9 +181,10 @@ def _summarise(
         union: NDArray[np.bool_] = np.logical_or.reduce([s.mask for s in liver])
         summaries.append(
             summarise_region(
-                POOLED_LIVER, "liver", union, stack, noise, fit, rules, source="pooled"
+                POOLED_LIVER, "liver", union, stack, noise, fit, rules,
+                source="pooled", lic_mg_per_g=lic,
             )
-        )
+        )  # fmt: skip
     return tuple(summaries)
 
 
@@ -215,7 +221,7 @@ def _study_findings(
         found.append(Finding.of("no-region"))
     elif headline is None:
         found.append(Finding.of("no-liver-region"))
-    if method.estimator in ESTIMATOR_REMARKS:
+    if not estimator_named(method.estimator).is_for_reports:
         found.append(
             Finding.of(
                 "estimator-for-comparison",

@@ -105,6 +105,7 @@ REPORT: dict[str, str] = {
     "caption_map_low": "fields up to 2 T",
     "caption_map_high": "fields above 2 T",
     "caption_decay": "Signal against echo time, region {name}",
+    "caption_residuals": "; below, what one decay leaves over, in units of the noise",
     "legend_outline": "outline of the region, as counted",
     "legend_over": "over the limit of this scan",
     "plot_signal": "median, quartiles",
@@ -113,6 +114,7 @@ REPORT: dict[str, str] = {
     "plot_floor": "noise floor",
     "axis_echo_time": "echo time (ms)",
     "axis_signal": "signal (log scale)",
+    "axis_residual": "residual / σ",
     "plane_axial": "axial",
     "plane_coronal": "coronal",
     "plane_sagittal": "sagittal",
@@ -139,6 +141,10 @@ REPORT: dict[str, str] = {
         "a logarithmic scale, from {start} at the first to {end} at the last; {curve}; and a "
         "dashed line at the noise floor of {floor}."
     ),
+    "alt_residuals": (
+        " Below, the mean residual of each echo in units of the noise, largest {largest} "
+        "at {te} ms."
+    ),
     "alt_curve_fit": "the fitted curve through them",
     "alt_curve_limit": "the decay at the limit of this scan, which they lie beyond",
     # Details
@@ -153,6 +159,8 @@ REPORT: dict[str, str] = {
         "standard error of one voxel (signal {s0}, noise {sigma}) reaches {share} % of R2*; the "
         "lower one follows from the region's own interval. Beyond a limit the limit is shown."
     ),
+    "spread_beyond_noise": "R2* of its voxels spreads by {sd} s⁻¹ (SD) beyond what noise explains.",
+    "spread_of_noise": "R2* of its voxels spreads no more than noise explains.",
     "limits_lic": ", LIC from {low} to {high} mg/g",
     "method": "Method",
     "method_fit": "Fit: {estimator}, voxel by voxel.",
@@ -166,6 +174,7 @@ REPORT: dict[str, str] = {
     "channels_many": "{count} effective channels",
     "noise_air": "background air",
     "noise_residual": "residuals in tissue",
+    "noise_joint": "the likelihood of whole decays",
     "noise_given": "the method file",
     "noise_ceiling": "an upper bound only: nothing measures it",
     "trim_none": "no voxel trimmed",

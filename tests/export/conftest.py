@@ -114,7 +114,7 @@ def make_summary(name: str = "right lobe", **changes: Any) -> RegionSummary:
         "n_trimmed": 11,
         "r2star": R2StarSummary(
             value=312.4, statistic="median", low=309.0, high=315.9, iqr=41.0, mean=314.1,
-            sd=33.0, qualifier="=", before_trimming=313.0,
+            sd=33.0, qualifier="=", before_trimming=313.0, sd_biological=31.0,
         ),
         "limits": ReportableLimits(
             low_r2star_per_s=0.0, high_r2star_per_s=1130.0, s0=410.0, sigma=4.1

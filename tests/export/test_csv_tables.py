@@ -39,6 +39,7 @@ def test_regions_csv_has_one_row_a_region_with_the_documents_numbers(made):
     assert float(liver["r2star_per_s"]) == 312.4
     assert float(liver["lic_mg_per_g"]) == 7.97
     assert (float(liver["lic_low_mg_per_g"]), float(liver["lic_high_mg_per_g"])) == (7.88, 8.06)
+    assert float(liver["r2star_sd_biological_per_s"]) == 31.0
     assert float(liver["limit_high_r2star_per_s"]) == 1130.0
     assert int(liver["n_voxels"]) == 812
     assert liver["band"] == "moderate"

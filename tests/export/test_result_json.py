@@ -34,7 +34,7 @@ REGION = (
     "n_trimmed r2star_per_s t2star_ms lic_mg_per_g lic_umol_per_g band limits"
 ).split()
 WITHIN_REGION = {
-    "r2star_per_s": "value statistic low high iqr mean sd qualifier",
+    "r2star_per_s": "value statistic low high iqr mean sd sd_biological qualifier",
     "lic_mg_per_g": "value low high qualifier basis",
     "band": "set name low_mg_per_g high_mg_per_g",
     "limits": "r2star_per_s lic_mg_per_g s0 sigma",
@@ -46,7 +46,7 @@ CONTRACT_REGION = {
 }  # fmt: skip
 CONTRACT_R2STAR = {
     "value": 312.4, "statistic": "median", "low": 309.0, "high": 315.9, "iqr": 41.0,
-    "mean": 314.1, "sd": 33.0, "qualifier": "=",
+    "mean": 314.1, "sd": 33.0, "sd_biological": 31.0, "qualifier": "=",
 }  # fmt: skip
 CONTRACT_LIC = {"value": 7.97, "low": 7.88, "high": 8.06, "qualifier": "=", "basis": "dry weight"}
 

@@ -7,7 +7,7 @@ import pytest
 
 from liverfe.fit import fit_r2star
 from liverfe.maps import DecayMaps, VoxelStatus, judge, repaint
-from liverfe.noise import estimate_noise
+from liverfe.noise import NoiseLevel, estimate_noise
 from tests.scenes import Scene, make_scene
 
 
@@ -58,6 +58,19 @@ def test_the_limit_of_a_voxel_follows_its_own_signal() -> None:
     bright, dim = make_scene(500.0, snr=50.0), make_scene(500.0, snr=50.0, organ_s0=40.0)
     assert share(judged(bright), bright.organ, VoxelStatus.MEASURED) > 0.99
     assert share(judged(dim), dim.organ, VoxelStatus.OVER_LIMIT) > 0.8
+
+
+def test_a_voxel_with_signal_in_one_echo_is_over_the_limit() -> None:
+    """Two echoes, 12 and 24 ms: at 180 /s the second holds 50 exp(-4.3) = 0.7 sigma. A limit as wide
+    as 50 % must not let its R2* through.
+    """
+    scene = make_scene(180.0, snr=50.0, times_ms=np.array([12.0, 24.0]))
+    noise = NoiseLevel(sigma=2.0, n_channels=1, method="given", relative_sd=0.0)
+    maps = judge(fit_r2star(scene.stack, noise), scene.stack, noise, voxel_relative_se=0.5)
+    shown = scene.organ & (maps.status == VoxelStatus.MEASURED)
+    amplitude = maps.s0[shown] * np.exp(-24e-3 * maps.r2star_per_s[shown])
+    assert (amplitude >= 0.96 * 2.0).all()
+    assert share(maps, scene.organ, VoxelStatus.OVER_LIMIT) > 0.3
 
 
 def test_a_region_paints_its_own_judgement() -> None:

@@ -19,10 +19,14 @@ from liverfe.phantom import (
 SHIPPED = {
     "bench-24-slices",
     "demo-thalassaemia-1p5t",
+    "fatty-liver-1p5t",
+    "field-gradient-1p5t",
     "low-field-0p55t",
     "moderate-3t",
+    "moving-1p5t",
     "normal-liver-1p5t",
     "severe-overload-1p5t",
+    "swapped-echoes-1p5t",
     "two-echoes",
 }
 

@@ -143,6 +143,7 @@ def make_summary(
         "r2star": R2StarSummary(
             value=value, statistic="median", low=value - 3.4, high=value + 3.5, iqr=41.0,
             mean=value + 1.7, sd=33.0, qualifier="=", before_trimming=value + 0.6,
+            sd_biological=31.0,
         ),
         "limits": ReportableLimits(
             low_r2star_per_s=0.0, high_r2star_per_s=1130.0, s0=S0, sigma=SIGMA

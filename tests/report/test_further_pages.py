@@ -55,6 +55,10 @@ def test_limits_are_told_with_their_reason(behind: str) -> None:
     assert "one voxel (signal 410.0, noise 4.00) reaches 10 % of R2*" in behind
 
 
+def test_the_spread_of_iron_is_told_apart_from_noise(behind: str) -> None:
+    assert "R2* of its voxels spreads by 31.0 s⁻¹ (SD) beyond what noise explains." in behind
+
+
 def test_every_other_curve_stands_with_citation_and_evidence(behind: str) -> None:
     assert "hernando2023_1p5 7.97 (7.88 to 8.06) moderate Hernando" in behind
     assert "wood2005 8.14 (8.05 to 8.23) moderate Wood" in behind

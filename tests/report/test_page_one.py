@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from string import Formatter
 
 import pytest
 
@@ -10,7 +11,7 @@ from liverfe.calibration import band_set
 from liverfe.echoes import Acquisition
 from liverfe.errors import Finding
 from liverfe.study import StudyResult
-from liverfe.wording import CAUTION
+from liverfe.wording import CAUTION, FINDING_TABLE
 from tests.report.pages import page_texts
 from tests.report.studies import (
     censored_result,
@@ -207,3 +208,24 @@ def test_banners_mark_synthetic_studies_and_local_curves(clean: list[str]) -> No
     text = page_texts(report_of(make_result(stack=synthetic, curve=local)))[0]
     assert "SYNTHETIC STUDY - no patient" in text
     assert "LOCAL CURVE" in text
+
+
+def test_a_doubt_that_regions_share_is_one_caution_on_page_one() -> None:
+    doubt = Finding.of("echoes-disagree", **facts_of_motion("liver"))
+    result = make_result()
+    liver = result.regions[0]
+    also = Finding.of("echoes-disagree", **facts_of_motion("spleen"))
+    regions = tuple(
+        replace(liver, summary=replace(liver.summary, name=name, findings=(found,)))
+        for name, found in ((liver.summary.name, doubt), ("spleen", also))
+    )
+    told = replace(doubt, text=f"{doubt.text} It shows in other regions too: spleen.")
+    page = page_texts(report_of(replace(result, findings=(told,), regions=regions)))[0]
+    assert "1 caution" in page
+    assert page.count("as by motion") == 1
+
+
+def facts_of_motion(region: str) -> dict[str, str]:
+    wording = FINDING_TABLE["echoes-disagree"]
+    facts = {name for _, name, _, _ in Formatter().parse(wording.text + wording.effect) if name}
+    return {name: region if name == "region" else "3" for name in facts}

@@ -8,7 +8,7 @@ from liverfe.wording.findings._acquire import ACQUIRE_FINDINGS
 from liverfe.wording.findings._calibration import CALIBRATION_FINDINGS
 from liverfe.wording.findings._entry import FindingWording, Level
 from liverfe.wording.findings._journey import JOURNEY_FINDINGS
-from liverfe.wording.findings._model import MODEL_FINDINGS
+from liverfe.wording.findings._model import DOUBT_PHRASES, MODEL_FINDINGS
 from liverfe.wording.findings._noise import NOISE_FINDINGS
 from liverfe.wording.findings._regions import REGION_FINDINGS
 
@@ -29,4 +29,4 @@ FINDING_TABLE: dict[str, FindingWording] = {
 if len(FINDING_TABLE) != sum(len(part) for part in _PARTS):  # pragma: no cover
     raise AssertionError("a finding code is written in two files of liverfe.wording.findings")
 
-__all__ = ["FINDING_TABLE", "FindingWording", "Level"]
+__all__ = ["DOUBT_PHRASES", "FINDING_TABLE", "FindingWording", "Level"]

@@ -57,7 +57,7 @@ REGION_FINDINGS: dict[str, FindingWording] = {
         level="stop",
         text=(
             "Region {region}: S0 over sigma is {snr}; no R2* could be measured to {relative} % in "
-            "a voxel with these echoes."
+            "a voxel with these echoes, nor in all of them together."
         ),
         effect="Voxels would be noise, and their median biased.",
         remedy=(
@@ -74,6 +74,25 @@ REGION_FINDINGS: dict[str, FindingWording] = {
         ),
         effect="At low signal the median of fast decays is biased by some percent.",
         remedy="Repeat with larger voxels, more signal, or echoes that suit this R2*.",
+    ),
+    "measured-jointly": FindingWording(
+        level="caution",
+        text=(
+            "Region {region}: S0 over sigma is {snr}; single voxels tell R2* to {best} % at best. "
+            "The decays of all its {n} voxels were fitted together instead; the upper limit is the "
+            "R2* that voxels measure best."
+        ),
+        effect="Iron that differs between voxels draws the value down by some percent.",
+        remedy="Repeat with larger voxels, more signal, or echoes that suit this R2*.",
+    ),
+    "two-usable-echoes": FindingWording(
+        level="caution",
+        text=(
+            "Region {region}: {share} % of its measured voxels have signal in two echoes only; "
+            "nothing is left there to check the decay."
+        ),
+        effect="Fat or a wrong echo shifts LIC without a trace.",
+        remedy="Repeat with a shorter first echo and echo spacing.",
     ),
     "no-tissue-signal": FindingWording(
         level="stop",
