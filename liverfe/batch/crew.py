@@ -31,8 +31,9 @@ _THREAD_VARIABLES = (
     "VECLIB_MAXIMUM_THREADS",
     "NUMEXPR_NUM_THREADS",
     "NUMBA_NUM_THREADS",
+    "RAYON_NUM_THREADS",
 )
-"""What numeric libraries read on import; BLAS threads times processes make everything slower."""
+"""What numeric libraries and the typesetter read; threads times processes slow all of them down."""
 
 _FAREWELL_S = 5.0
 """How long to wait for a worker that was told to leave."""

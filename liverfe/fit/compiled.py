@@ -24,10 +24,12 @@ from importlib.resources.abc import Traversable
 from typing import Any
 
 import numba
+import numpy as np
 from numba.core.caching import CompileResultCacheImpl, FunctionCache
 from numba.core.dispatcher import Dispatcher
 from numba.core.serialize import dumps
 from numba.core.sigutils import normalize_signature
+from numpy.typing import NDArray
 
 _ROOM = "liverfe.fit"
 
@@ -56,6 +58,16 @@ def compiled(**options: Any) -> Callable[[Callable[..., Any]], Any]:
         return kernel
 
     return decorate
+
+
+def as_argument(array: NDArray[Any]) -> NDArray[Any]:
+    """Give an array as the kernels take it: row after row, and locked.
+
+    A kernel is compiled for each kind of array that it meets, which takes seconds: so it meets one.
+    """
+    view = np.ascontiguousarray(array).view()
+    view.flags.writeable = False
+    return view
 
 
 @cache

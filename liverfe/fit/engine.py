@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 from scipy.special import chdtri
 
 from liverfe.fit.blocks import run_in_blocks
+from liverfe.fit.compiled import as_argument
 from liverfe.fit.kernels import fit_voxels
 from liverfe.fit.likelihood_kernels import Workspace
 from liverfe.fit.signal_models import SignalModel, echo_times_of
@@ -105,14 +106,26 @@ def fit_decays(
     first = no_signal_first(n)
 
     def work(block: slice) -> None:
-        m, used = np.empty(len(times)), np.empty(len(times), dtype=bool)
-        room = Workspace.of(len(times), n_p)
+        some = wanted[block]
         fit_voxels(
-            model, signal, echoes, times, sigma, wanted[block], noise, power, first,
-            m, used, room,
-            fits.parameters[block], fits.standard_errors[block], fits.log_likelihood[block],
-            fits.log_det_information[block], fits.reduced_chi2[block], fits.outcome[block],
-        )  # fmt: skip
+            model,
+            as_argument(signal[some]),
+            as_argument(echoes if len(echoes) == 1 else echoes[some]),
+            as_argument(times),
+            as_argument(sigma if len(sigma) == 1 else sigma[some]),
+            noise,
+            as_argument(power),
+            first,
+            np.empty(len(times)),
+            np.empty(len(times), dtype=bool),
+            Workspace.of(len(times), n_p),
+            fits.parameters[block],
+            fits.standard_errors[block],
+            fits.log_likelihood[block],
+            fits.log_det_information[block],
+            fits.reduced_chi2[block],
+            fits.outcome[block],
+        )
 
     run_in_blocks(work, n_rows)
     fits.parameters[:, 1] *= 1e3

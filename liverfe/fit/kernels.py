@@ -281,17 +281,16 @@ def take_in(
 @compiled(nogil=True, error_model="numpy", no_cfunc_wrapper=True)
 def fit_voxels(
     model: SignalModel, signal: Array32, usable: Used, times: Array,
-    sigma: Array, rows: NDArray[np.intp], noise: KernelTables, no_signal_power: Array,
+    sigma: Array, noise: KernelTables, no_signal_power: Array,
     no_signal_first: float, m: Array, used: Used, work: Workspace,
     p_out: Array, se_out: Array, likelihood_out: Array, log_det_out: Array, chi2_out: Array32,
     outcome_out: NDArray[np.uint8],
 ) -> None:  # fmt: skip
-    """Fit the rows named in `rows`; see `liverfe.fit.engine` for what the arguments mean."""
+    """Fit each row of `signal`; see `liverfe.fit.engine` for what the arguments mean."""
     n_p = len(model.lower)
-    for place in range(len(rows)):
-        v = rows[place]
-        s = sigma[v % len(sigma)]
-        n_used, power, first = take_in(signal[v], 1.0 / s, usable[v % len(usable)], m, used)
+    for place in range(len(signal)):
+        s = sigma[place % len(sigma)]
+        n_used, power, first = take_in(signal[place], 1.0 / s, usable[place % len(usable)], m, used)
         if n_used < n_p:
             outcome_out[place] = NOT_FITTED
             continue

@@ -10,6 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from liverfe.fit.blocks import run_in_blocks
+from liverfe.fit.compiled import as_argument
 from liverfe.fit.decay import FitOutcome
 from liverfe.fit.engine import LikelihoodFits, fit_decays, no_signal_first, no_signal_powers
 from liverfe.fit.lane_kernels import LEFT_TO_ENGINE, UNSETTLED, LaneNoise, fit_in_lanes
@@ -126,9 +127,9 @@ def _fit_in_lanes(
     ) -> None:
         scratch = np.empty(len(times) * WIDTH, np.float32), np.empty(5 * WIDTH, np.float32)
         fit_in_lanes(
-            some,
-            times,
-            its_sigma,
+            as_argument(some),
+            as_argument(times),
+            as_argument(its_sigma),
             noise,
             max_rate,
             again,

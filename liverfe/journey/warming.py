@@ -1,7 +1,8 @@
-"""What the last step needs is imported while the images load.
+"""What later steps need is made ready while the images are read.
 
-matplotlib takes half a second, much of it reading and linking compiled libraries, which lets other
-threads run.
+The compiled kernels are loaded (on a new machine they are compiled first, once), and the report's
+libraries are imported: half a second each, much of it reading and linking, which lets other threads
+run.
 """
 
 from __future__ import annotations
@@ -10,23 +11,34 @@ import importlib
 import threading
 from contextlib import suppress
 
-_NEEDED_LATER = "liverfe.report"
+from liverfe.fit import warm_up
 
 
 def start_warming() -> threading.Thread:
-    """Import the report in the background.
+    """Load kernels and report in the background.
 
     Returns
     -------
     Thread
-        Already running; whoever needs the room simply imports it and waits as long as it takes.
+        Already running; whoever needs what it makes ready takes it and waits as long as it takes.
     """
-    thread = threading.Thread(target=_import_room, name="warming", daemon=True)
+    # No daemon: at the end of the process a compiler must not lose its ground in mid-work, which
+    # would abort the process. So the end waits for the step at hand.
+    thread = threading.Thread(target=_warm, name="warming")
     thread.start()
     return thread
 
 
-def _import_room() -> None:
-    # A room that cannot be imported says so where it is needed, in the thread that needs it.
-    with suppress(Exception):
-        importlib.import_module(_NEEDED_LATER)
+def _warm() -> None:
+    for step in (warm_up, _import_report):
+        if not threading.main_thread().is_alive():
+            return
+        # What fails here fails again where it is needed, and says so in the thread that needs it.
+        with suppress(Exception):
+            step()
+
+
+def _import_report() -> None:
+    importlib.import_module("liverfe.report")
+    # The drawing library takes this one only when it saves the first figure.
+    importlib.import_module("matplotlib.backends.backend_svg")

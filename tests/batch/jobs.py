@@ -34,7 +34,8 @@ def work(task: tuple[str, Any]) -> Any:
     if what == "usage":
         raise UsageError(value)
     if what == "threads":
-        return {name: os.environ.get(name) for name in ("OMP_NUM_THREADS", "NUMBA_NUM_THREADS")}
+        names = ("OMP_NUM_THREADS", "NUMBA_NUM_THREADS", "RAYON_NUM_THREADS")
+        return {name: os.environ.get(name) for name in names}
     if what == "ignores interrupt":
         return signal.getsignal(signal.SIGINT) == signal.SIG_IGN
     if what == "process":
