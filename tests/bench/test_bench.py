@@ -63,9 +63,90 @@ def test_both_programs_run_in_turns_and_are_measured(
     for name in ("naive", "liverfe"):
         assert len(result["seconds"][name]) == 1
         assert 0.1 < result["seconds"][name][0] < 120
-        assert result["peak_gib"][name] is None or 0.05 < result["peak_gib"][name] < 4
-    assert json.loads(json.dumps(result)) == result
-    assert "times as long" in bench.table(result)
+        assert result["peak_mib"][name] is None or 50 < result["peak_mib"][name] < 4000
+    row = bench.whole_run_row(result)
+    assert json.loads(json.dumps(row)) == row
+    assert row["key"] in bench.table([row])
+
+
+@pytest.mark.parametrize(
+    ("ratio", "peak", "reached"),
+    [(1.29, 699, True), (1.31, 400, False), (0.9, 701, False), (1.0, None, True)],
+)
+def test_the_whole_run_keeps_to_what_was_asked(
+    ratio: float, peak: float | None, reached: bool, bench: ModuleType
+) -> None:
+    row = bench.whole_run_row(
+        {
+            "recipe": "r",
+            "n_pairs": 5,
+            "median_seconds": {"naive": 10.0, "liverfe": 10.0 * ratio},
+            "peak_mib": {"naive": 300.0, "liverfe": peak},
+            "times_as_long": ratio,
+        }
+    )
+    assert row["reached"] is reached
+    assert ("MISSED" in bench.table([row])) is not reached
+
+
+def test_the_table_tells_missed_and_proven_cells_and_no_others(bench: ModuleType) -> None:
+    def cell(where: str, *, reached: bool, note: str = "") -> dict[str, object]:
+        return {"where": where, "text": "1.06", "reached": reached, "note": note}
+
+    cells = [
+        cell("plain", reached=True),
+        cell("excused", reached=True, note="at least 1.06 (Neyman-Pearson)"),
+        cell("short", reached=False, note="why"),
+    ]
+    row = {
+        "key": "rmse", "what": "w", "asked": "at most 1.05", "measured": "1.06", "reached": False,
+        "remarks": ["a remark"], "cells": cells,
+    }  # fmt: skip
+    shown = bench.table([row])
+    assert "at most 1.05 | 1.06" in shown
+    assert "proven: excused: 1.06" in shown
+    assert "MISSED: short: 1.06 (why)" in shown
+    assert "plain" not in shown
+    assert "a remark" in shown
+
+
+def test_the_table_has_the_rows_of_the_statistics_and_the_whole_run(bench: ModuleType) -> None:
+    from tests.statistics.table import KEYS
+
+    assert bench.ROWS == (*bench.SCIENCE, *bench.COST, bench.WHOLE_RUN)
+    assert sorted(bench.ROWS[:-1]) == sorted(KEYS)
+    assert set(bench.EVERY_DAY) < set(bench.ROWS)
+
+
+@pytest.mark.parametrize(("reached", "status"), [(True, 0), (False, 1)])
+def test_a_missed_row_makes_the_command_fail(
+    reached: bool,
+    status: int,
+    bench: ModuleType,
+    monkeypatch: pytest.MonkeyPatch,
+    capsys: pytest.CaptureFixture[str],
+) -> None:
+    row = {"key": "limit", "what": "w", "asked": "a", "measured": "m", "remarks": [], "cells": []}
+    asked: list[list[str]] = []
+
+    def measured(python: str, keys: list[str]) -> list[dict[str, object]]:
+        asked.append(keys)
+        return [{**row, "reached": reached}]
+
+    monkeypatch.setattr(bench.environment, "ready", lambda part: sys.executable)
+    monkeypatch.setattr(bench, "measure_statistics", measured)
+    monkeypatch.setattr(sys, "argv", ["bench", "--only", "limit", "--json"])
+    assert bench.main() == status
+    assert asked == [["limit"]]
+    assert json.loads(capsys.readouterr().out)["reached"] is reached
+
+
+@pytest.mark.bench
+def test_the_statistics_are_measured_in_a_process_of_their_own(bench: ModuleType) -> None:
+    rows = bench.measure_statistics(sys.executable, ["memory"], cut=True)
+    assert [row["key"] for row in rows] == ["memory"]
+    assert rows[0]["cells"][0]["measured"] > 0.1
+    assert bench.measure_statistics(sys.executable, []) == []
 
 
 @pytest.mark.bench
@@ -91,14 +172,3 @@ def test_the_naive_script_is_a_fair_opponent(
         ]
     assert len(list((tmp_path / "out").glob("*.nii.gz"))) == 7
     assert (tmp_path / "out" / "report.pdf").stat().st_size > 10_000
-
-
-@pytest.mark.parametrize(
-    ("times_as_long", "peak_gib", "kept"),
-    [(2.4, 1.4, True), (2.6, 1.4, False), (2.4, 1.6, False), (2.4, None, True)],
-)
-def test_the_limits_are_held(
-    times_as_long: float, peak_gib: float | None, kept: bool, bench: ModuleType
-) -> None:
-    result = {"times_as_long": times_as_long, "peak_gib": {"liverfe": peak_gib}}
-    assert bench.within_limits(result) is kept
