@@ -8,7 +8,7 @@ does (the same in every voxel and at every echo).
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -17,27 +17,24 @@ from skimage.filters import threshold_otsu
 
 from liverfe.echoes import EchoStack
 from liverfe.noise.level import NoiseCandidate
+from liverfe.noise.moments import BY_CHANCE, MOST_CHANNELS, Moments, moments_of
 
 _ENOUGH_VOXELS = 400
 """Below this many air voxels the number of channels cannot be told."""
-_MOST_VOXELS = 200_000
+_MOST_VOXELS = 60_000
 """More voxels add nothing: sigma is then known to 0.1 %."""
+_MASKED = 0.02
+"""Share of voxels that are zero at every echo from which the scanner is taken to have done it."""
+_NARROWED = 0.7
+"""The number of channels seen at first, taken down by this, widens the bounds of their level."""
 _TREND_CHANCE = 0.01
 """A voxel whose signal falls with echo time more than noise does by this chance is no air; those
 that rise as much go too, or the rest would rise."""
 _TAIL = 0.005
 """Share of true noise voxels that the selection by mean square may lose at each end."""
-_SAME_IN_VOXELS = (0.6, 1.5)
-"""Variance between voxels over what the variance within them predicts: 1 for pure noise."""
-_NEIGHBOURS = 64
-"""Voxels in a row whose mean is compared with the others': what no single voxel shows, they do."""
 _UNEVEN = 0.15
 """Sigma² may differ over the image by this share (SD): a ghost over half of the air that does so
 makes sigma 8 % too high."""
-_SAME_IN_ECHOES = 1.10
-"""Largest over smallest mean square of the echoes: 1 for pure noise."""
-_BY_CHANCE = 4.0
-"""Both may be exceeded by this many standard errors."""
 _STANDS_OUT = 10.0
 """Amplitude of the brightest percent in sigma. Where nothing is so bright, what is darkest may be
 tissue, whose few echoes at low signal look like the noise of many channels."""
@@ -45,7 +42,7 @@ _NATURAL_ZEROS = 4.0
 """Exact zeros up to this many times what quantisation explains are noise, more are a mask."""
 _LEAST_RELATIVE_SD = 0.005
 """Sigma is never known better than this: air differs over the image."""
-_MOST_CHANNELS = 64
+_ECHOES_TO_HALVE = 4
 _SEVERAL_CHANNELS = 1.2
 """Below this many effective channels there is no constant to speak of."""
 _SKEWER = 0.12
@@ -53,41 +50,20 @@ _SKEWER = 0.12
 whose noise is correlated differ by less."""
 _RAYLEIGH_MEAN_OVER_SD = 1.913
 """Mean over SD of the noise of one channel, sqrt(pi / (4 - pi)) (Koay 2006)."""
+_RAYLEIGH_SKEWNESS = 0.6311
+"""Skewness of the noise of one channel."""
+_ZEROED = "the scanner set the background to zero"
 _CLIPPED = "part of the background was set to zero"
 
 Array = NDArray[np.float64]
 
 
-@dataclass(frozen=True, slots=True)
-class _Moments:
-    mean_square: float
-    variance_of_square: float
-    between_over_within: float
-    unevenness: float
-    echo_spread: float
-    n_voxels: int
-    n_echoes: int
-
-    @property
-    def channels(self) -> float:
-        """Central chi: M²/sigma² is chi-square with 2n degrees, so n = mean² / variance."""
-        variance = self.variance_of_square
-        return self.mean_square**2 / variance if variance > 0 else float(_MOST_CHANNELS)
-
-    @property
-    def between_limit(self) -> float:
-        """Largest believable `between_over_within`, with its standard error for chi-squares."""
-        kurtosis = 2.0 * 6.0 / self.channels / self.n_echoes
-        se = np.sqrt((2.0 + 2.0 / (self.n_echoes - 1) + kurtosis) / self.n_voxels)
-        return float(_SAME_IN_VOXELS[1] + _BY_CHANCE * se)
-
-    @property
-    def echo_limit(self) -> float:
-        """Largest believable `echo_spread`: a mean of N chi-squares varies by 1 / sqrt(n N)."""
-        return float(_SAME_IN_ECHOES + _BY_CHANCE / np.sqrt(self.channels * self.n_voxels))
-
-
-def sigma_from_air(stack: EchoStack, *, n_channels: int | None = None) -> NoiseCandidate:
+def sigma_from_air(
+    stack: EchoStack,
+    *,
+    n_channels: int | None = None,
+    relative_sigma: NDArray[np.float32] | None = None,
+) -> NoiseCandidate:
     """Estimate sigma and the number of channels from background air.
 
     Parameters
@@ -97,6 +73,8 @@ def sigma_from_air(stack: EchoStack, *, n_channels: int | None = None) -> NoiseC
     n_channels : int or None
         Effective number of channels if known; None: from the background itself,
         ``n = mean(M²)² / var(M²)`` to the nearest whole number.
+    relative_sigma : ndarray of float32, shape (X, Y, Z), or None
+        How sigma varies over the image, if it does; the result is the sigma where this is 1.
 
     Returns
     -------
@@ -104,13 +82,23 @@ def sigma_from_air(stack: EchoStack, *, n_channels: int | None = None) -> NoiseC
         ``sigma² = mean(M²) / 2n`` (Constantinides 1997), or sigma None and a remark that says why
         there is no usable air.
     """
-    signal = _voxels(stack)
+    signal = _voxels(stack, relative_sigma)
     masked = (signal == 0).all(axis=1)
-    if masked.mean() > 0.02 and (~masked).sum() > 0 and _is_cut_out(signal, masked):
-        # A mask takes a voxel out at every echo; a threshold leaves more voxels partly zero.
-        partly = (signal[~masked] == 0).any(axis=1).sum() > masked.sum()
-        return replace(_closed("the scanner set the background to zero"), is_clipped=bool(partly))
-    signal = signal[~masked]
+    is_masked = bool(
+        masked.mean() > _MASKED and (~masked).sum() > 0 and _is_cut_out(signal, masked)
+    )
+    # A mask takes a voxel out at every echo; a threshold leaves more voxels partly zero.
+    if is_masked and (signal[~masked] == 0).any(axis=1).sum() > masked.sum():
+        return replace(_closed(_ZEROED), is_clipped=True)
+    found = _from_voxels(signal[~masked], stack.echo_times_ms, n_channels)
+    if not is_masked:
+        return found
+    return replace(found, is_partial=True, remark=found.remark if found.sigma else _ZEROED)
+
+
+def _from_voxels(
+    signal: NDArray[np.float32], echo_times_ms: Array, n_channels: int | None
+) -> NoiseCandidate:
     if len(signal) < _ENOUGH_VOXELS:
         return _closed("too few voxels with any value")
     square = signal.astype(np.float64) ** 2
@@ -118,17 +106,18 @@ def sigma_from_air(stack: EchoStack, *, n_channels: int | None = None) -> NoiseC
     quiet = (level <= _dark_threshold(level)) & ~_has_trend(signal)
     if quiet.sum() < _ENOUGH_VOXELS:
         return _closed("no background in view")
-    chosen = _of_one_level(level[quiet], signal.shape[1])
-    if chosen.sum() < _ENOUGH_VOXELS:
+    air = _of_one_level(square[quiet])
+    if len(air) < _ENOUGH_VOXELS:
         return _closed("no background with one common noise level")
-    air = square[quiet][chosen]
-    trend = _echo_scale_trend_per_s(air, stack.echo_times_ms) if stack.n_echoes > 2 else 0.0
+    trend = _echo_scale_trend_per_s(air, echo_times_ms) if len(echo_times_ms) > 2 else 0.0
     air = _late_enough(air)
-    moments = _moments(air)
-    n = n_channels or int(np.clip(np.rint(moments.channels), 1, _MOST_CHANNELS))
+    moments = moments_of(air)
+    n = n_channels or int(np.clip(np.rint(moments.channels), 1, MOST_CHANNELS))
     sigma = float(np.sqrt(moments.mean_square / (2.0 * n)))
     magnitudes = np.sqrt(air)
-    constant = _added_constant(moments, magnitudes)
+    # A constant is in every echo; what dark tissue leaves among the air is in the first.
+    late = air[:, air.shape[1] // 2 :] if air.shape[1] >= _ECHOES_TO_HALVE else air
+    constant = _added_constant(moments_of(late), np.sqrt(late))
     problem = _why_not(moments, magnitudes, constant)
     if np.percentile(square[:, 0], 99.0) - moments.mean_square < (_STANDS_OUT * sigma) ** 2:
         problem = problem or "nothing in view stands out from the background: it may be tissue"
@@ -150,13 +139,18 @@ def sigma_from_air(stack: EchoStack, *, n_channels: int | None = None) -> NoiseC
     )
 
 
-def _voxels(stack: EchoStack) -> NDArray[np.float32]:
+def _voxels(stack: EchoStack, relative_sigma: NDArray[np.float32] | None) -> NDArray[np.float32]:
     """Rows of complete slices, thinned evenly where there are more than needed."""
-    signal = stack.magnitude[:, :, stack.complete_slices].reshape(-1, stack.n_echoes)
+    whole = stack.complete_slices
+    seen = slice(None) if whole.all() else whole  # a view where it does
+    signal = stack.magnitude[:, :, seen].reshape(-1, stack.n_echoes)
     step = max(1, len(signal) // _MOST_VOXELS)
     while np.gcd(step, stack.grid.shape[2]) > 1 and step > 1:
         step += 1  # slices alternate fastest: a common factor would leave some out
     signal = signal[::step]
+    if relative_sigma is not None:
+        scale = relative_sigma[:, :, seen].reshape(-1)[::step]
+        signal = signal / scale[:, None]
     return signal[np.isfinite(signal).all(axis=1)]
 
 
@@ -187,13 +181,24 @@ def _has_trend(signal: NDArray[np.float32]) -> NDArray[np.bool_]:
     return np.asarray(np.abs(slope) > limit * np.maximum(se, 1e-30))
 
 
-def _of_one_level(level: Array, n_echoes: int) -> NDArray[np.bool_]:
+def _of_one_level(square: Array) -> Array:
     """Voxels whose mean square fits one noise level: the level that most of them fit.
 
-    For one channel the mean of E squares is ``2 sigma²`` times a gamma variable of order E over E;
-    more channels spread less and stay inside the same bounds.
+    The mean of E squares of n channels is ``2n sigma²`` times a gamma variable of order nE over nE.
+    One channel spreads most, so its bounds come first; then those of the channels that show.
     """
-    low, high = (gammaincinv(n_echoes, p) / n_echoes for p in (_TAIL, 1.0 - _TAIL))
+    level, n_echoes = square.mean(axis=1), square.shape[1]
+    chosen = _within(level, n_echoes)
+    if chosen.sum() < _ENOUGH_VOXELS:
+        return square[chosen]
+    channels = moments_of(square[chosen]).channels
+    if channels > _SEVERAL_CHANNELS:
+        chosen = _within(level, _NARROWED * min(channels, MOST_CHANNELS) * n_echoes)
+    return square[chosen]
+
+
+def _within(level: Array, order: float) -> NDArray[np.bool_]:
+    low, high = (gammaincinv(order, p) / order for p in (_TAIL, 1.0 - _TAIL))
     ordered = np.sort(level)
     trials = np.geomspace(ordered[0] + 1e-30 * ordered[-1], ordered[-1], 400)
     count = np.searchsorted(ordered, trials * high) - np.searchsorted(ordered, trials * low)
@@ -215,7 +220,7 @@ def _echo_scale_trend_per_s(square: Array, echo_times_ms: Array) -> float:
     t = echo_times_ms - echo_times_ms.mean()
     trend = t @ (0.5 * np.log(mean)) / (t @ t)
     se = np.sqrt((t**2 * (0.5 * square.std(axis=0) / mean) ** 2).sum() / len(square)) / (t @ t)
-    return float(1e3 * trend) if abs(trend) > _BY_CHANCE * se else 0.0
+    return float(1e3 * trend) if abs(trend) > BY_CHANCE * se else 0.0
 
 
 def _late_enough(square: Array) -> Array:
@@ -225,39 +230,13 @@ def _late_enough(square: Array) -> Array:
     counted as such; their first echoes are not.
     """
     for first in range(max(square.shape[1] // 2, 1)):
-        moments = _moments(square[:, first:])
+        moments = moments_of(square[:, first:])
         if moments.echo_spread <= moments.echo_limit:
             return square[:, first:]
     return square
 
 
-def _moments(square: Array) -> _Moments:
-    n_voxels, n_echoes = square.shape
-    within = square.var(axis=1, ddof=1).mean()
-    between = square.mean(axis=1).var(ddof=1) * n_echoes
-    per_echo = square.mean(axis=0)
-    return _Moments(
-        mean_square=float(square.mean()),
-        variance_of_square=float(within),
-        between_over_within=float(between / within) if within > 0 else np.inf,
-        unevenness=_unevenness(square.mean(axis=1), within / n_echoes),
-        echo_spread=float(per_echo.max() / per_echo.min()),
-        n_voxels=n_voxels,
-        n_echoes=n_echoes,
-    )
-
-
-def _unevenness(level: Array, variance: float) -> float:
-    """SD of the level from place to place as a share of it, less what chance explains."""
-    n_rows = len(level) // _NEIGHBOURS
-    if n_rows < 2:
-        return 0.0
-    rows = level[: n_rows * _NEIGHBOURS].reshape(n_rows, -1).mean(axis=1)
-    by_chance = variance / _NEIGHBOURS * (1.0 + _BY_CHANCE * np.sqrt(2.0 / n_rows))
-    return float(np.sqrt(max(rows.var(ddof=1) - by_chance, 0.0)) / level.mean())
-
-
-def _added_constant(moments: _Moments, magnitudes: Array) -> float:
+def _added_constant(moments: Moments, magnitudes: Array) -> float:
     """The constant that noise of one channel seems to stand on; 0 where it stands on none.
 
     A constant added to Rayleigh noise gives mean and variance of several channels, and takes
@@ -273,13 +252,15 @@ def _added_constant(moments: _Moments, magnitudes: Array) -> float:
     centred = magnitudes - magnitudes.mean()
     sd = centred.std()
     skewness = (centred**3).mean() / sd**3
-    told = _SKEWER + _BY_CHANCE * np.sqrt(6.0 / magnitudes.size)
+    # Tissue among the air skews it too, but not all the way to one channel.
+    told = max(_SKEWER, 0.5 * (_RAYLEIGH_SKEWNESS - expected))
+    told += BY_CHANCE * np.sqrt(6.0 / magnitudes.size)
     if skewness - expected <= told:
         return 0.0
     return float(magnitudes.mean() - _RAYLEIGH_MEAN_OVER_SD * sd)
 
 
-def _why_not(moments: _Moments, magnitudes: Array, constant: float) -> str:
+def _why_not(moments: Moments, magnitudes: Array, constant: float) -> str:
     """What speaks against taking these voxels as noise; empty if nothing does."""
     zeros = float((magnitudes == 0).mean())
     step = _quantum(magnitudes)
@@ -287,8 +268,7 @@ def _why_not(moments: _Moments, magnitudes: Array, constant: float) -> str:
     natural = 1.0 - np.exp(-(step**2) / (4.0 * moments.mean_square))
     if zeros > _NATURAL_ZEROS * natural + 0.002:
         return _CLIPPED
-    same = _SAME_IN_VOXELS[0] <= moments.between_over_within <= moments.between_limit
-    if not same or moments.unevenness > _UNEVEN:
+    if not moments.is_even or moments.unevenness > _UNEVEN:
         return "the background differs from place to place: it is not noise alone"
     if moments.echo_spread > moments.echo_limit:
         return "the background changes with echo time: it is not noise alone"

@@ -12,7 +12,7 @@ from scipy.special import chdtri
 
 from liverfe.echoes import EchoStack
 from liverfe.noise.level import NoiseCandidate
-from liverfe.noise.residual import bright_triplets
+from liverfe.noise.triplets import bright_triplets
 
 _ENOUGH_PAIRS = 200
 _HIGH_SIGNAL = 8.0
@@ -39,7 +39,7 @@ def sigma_ceiling(stack: EchoStack) -> NoiseCandidate:
     NoiseCandidate
         The bound, or sigma None where there are too few voxels of high signal.
     """
-    square = bright_triplets(stack)[[0, 2]][..., [0, -1]]
+    square = bright_triplets(stack).square[[0, 2]][..., [0, -1]]
     known = (square > 0).all(axis=(0, 2))
     square = square[:, known]
     sigma, remark = None, "too few voxels of one tissue with high signal"

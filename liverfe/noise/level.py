@@ -17,7 +17,7 @@ class NoiseCandidate:
     Attributes
     ----------
     method : str
-        ``air``, ``residual`` or ``given``.
+        ``air``, ``residual``, ``joint``, ``ceiling`` or ``given``.
     sigma : float or None
         Noise SD per real or imaginary channel, in signal units; None where the way was closed.
     n_channels : int
@@ -35,6 +35,8 @@ class NoiseCandidate:
         The constant that the background seems to stand on, signal units; 0 where on none.
     is_clipped : bool
         Whether single values of the background were set to zero, as after a subtraction.
+    is_partial : bool
+        Whether part of the background was masked: what is left is believed only if tissue agrees.
     """
 
     method: str
@@ -46,6 +48,7 @@ class NoiseCandidate:
     echo_scale_trend_per_s: float = 0.0
     added_constant: float = 0.0
     is_clipped: bool = False
+    is_partial: bool = False
 
 
 @dataclass(frozen=True, slots=True, kw_only=True, eq=False)
@@ -59,13 +62,15 @@ class NoiseLevel:
     n_channels : int
         Effective number of coil channels of the magnitude (1: Rician).
     method : str
-        ``air``, ``residual`` or ``given``: the candidate that was chosen.
+        ``air``, ``residual``, ``joint``, ``ceiling`` or ``given``: the candidate that was chosen.
     relative_sd : float
         Standard error of `sigma` as a share of it.
     candidates : tuple of NoiseCandidate
         All ways that were tried, with the cross-check in their remarks.
     sigma_map : ndarray of float32, shape (X, Y, Z), or None
         Sigma of each voxel, where it varies over the image.
+    channels_between : tuple of int, or None
+        Fewest and most channels that nothing rules out; None where `n_channels` is known.
     findings : tuple of Finding
         Doubts about the noise.
     """
@@ -76,6 +81,7 @@ class NoiseLevel:
     relative_sd: float
     candidates: tuple[NoiseCandidate, ...] = ()
     sigma_map: NDArray[np.float32] | None = None
+    channels_between: tuple[int, int] | None = None
     findings: tuple[Finding, ...] = ()
 
     def __post_init__(self) -> None:

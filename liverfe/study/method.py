@@ -23,12 +23,12 @@ class Method:
         The site's name for it.
     estimator : str
         One of `ESTIMATORS`.
-    noise : {'auto', 'air', 'residual', 'given'}
+    noise : {'auto', 'air', 'residual', 'joint', 'given'}
         How sigma is found; ``given`` takes `sigma`.
     sigma : float or None
         Noise SD per channel in signal units, for ``given``.
     n_channels : int or None
-        Effective number of coil channels; None: tested from the background.
+        Effective number of coil channels; None: told by the background or by dark tissue.
     voxel_relative_se : float
         The upper limit lies where one voxel's standard error reaches this share of R2*.
     trim : {'none', 'mad'}
@@ -47,7 +47,7 @@ class Method:
 
     name: str = "house"
     estimator: str = "rician-ml"
-    noise: Literal["auto", "air", "residual", "given"] = "auto"
+    noise: Literal["auto", "air", "residual", "joint", "given"] = "auto"
     sigma: float | None = None
     n_channels: int | None = None
     voxel_relative_se: float = 0.10
@@ -61,8 +61,8 @@ class Method:
     def __post_init__(self) -> None:
         _check(self.estimator in ESTIMATORS, "estimator", self.estimator, " or ".join(ESTIMATORS))
         _check(
-            self.noise in ("auto", "air", "residual", "given"),
-            "noise", self.noise, "auto, air, residual or given",
+            self.noise in ("auto", "air", "residual", "joint", "given"),
+            "noise", self.noise, "auto, air, residual, joint or given",
         )  # fmt: skip
         _check(
             (self.sigma is not None) == (self.noise == "given"),

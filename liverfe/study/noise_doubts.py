@@ -16,8 +16,9 @@ _MATTERS = 0.05
 """A shift of R2* by this share is told as a caution: it could move a LIC across a decision."""
 _DECIDES = 0.50
 """A shift by this share leaves nothing to state."""
-_OTHER_CHANNELS = 8
-"""What is tried where the number of channels is unknown: a middling sum of squares."""
+_MOST_WITHOUT_SIGN = 16
+"""More effective channels than these are tried only where the tissue shows more than one: coils far
+from the liver add none there."""
 _AGREE = 0.10
 """Sigmas within this share of each other agree, as in `liverfe.noise`."""
 _NEXT_TO_NONE = 0.05
@@ -63,11 +64,18 @@ def noise_findings(
                 )
             else:
                 found.append(Finding.of("noise-cross-check", **told))
-    if any(finding.code == "channels-not-tested" for finding in noise.findings):
-        shift = _shift(summary, stack, noise, sigma=noise.sigma, n=_OTHER_CHANNELS)
+    if noise.channels_between is not None:
+        shift, other = max(
+            (
+                (_shift(summary, stack, noise, sigma=noise.sigma, n=n), n)
+                for n in _other_channels(noise)
+            ),
+            key=lambda tried: abs(tried[0]),
+        )
         facts = {
             "region": summary.name,
-            "other": _OTHER_CHANNELS,
+            "assumed": noise.n_channels,
+            "other": other,
             "shift": f"{100 * shift:+.0f}",
         }
         if abs(shift) > _DECIDES and summary.r2star.qualifier == "=":
@@ -75,6 +83,15 @@ def noise_findings(
         if abs(shift) > _MATTERS:
             found.append(Finding.of("channels-matter", **facts))
     return tuple(found)
+
+
+def _other_channels(noise: NoiseLevel) -> tuple[int, ...]:
+    """Both ends of the range that is open; nobody expects very many channels without a sign."""
+    assert noise.channels_between is not None
+    fewest, most = noise.channels_between
+    if noise.n_channels == 1:
+        return (min(most, _MOST_WITHOUT_SIGN),)
+    return tuple(n for n in (fewest, most) if n != noise.n_channels)
 
 
 def refuse_unbounded(
@@ -114,11 +131,12 @@ def _shift(
     reach, or out of it, counts in full.
     """
     mask = summary.used if summary.r2star.qualifier == "=" else summary.mask
-    signal = stack.magnitude[mask]
-    signal = signal[:: max(1, len(signal) // _MOST_VOXELS)]
+    every = max(1, int(mask.sum()) // _MOST_VOXELS)
+    signal = stack.magnitude[mask][::every]
+    place = np.ones(1) if noise.sigma_map is None else noise.sigma_map[mask][::every] / noise.sigma
 
     def median(trial_sigma: float, trial_n: int) -> float:
-        rows = fit_rows(signal, stack.echo_times_ms, np.array([trial_sigma]), trial_n)
+        rows = fit_rows(signal, stack.echo_times_ms, trial_sigma * place.astype(float), trial_n)
         fast = np.where(np.isfinite(rows.r2star_per_s), rows.r2star_per_s, np.inf)
         return float(np.median(fast))
 

@@ -42,6 +42,33 @@ class Abdomen:
         return stack_of(magnitude, self.times_ms)
 
 
+def liver_mask(shape: tuple[int, int, int] = SHAPE) -> Mask:
+    """The disc of liver of an `abdomen` of this shape."""
+    x = np.linspace(-1, 1, shape[0])[:, None]
+    y = np.linspace(-1, 1, shape[1])[None, :]
+    disc = (x - 0.3) ** 2 + y**2 < 0.1225
+    return np.repeat(disc[..., None], shape[2], axis=2)
+
+
+def zero_filled(
+    amplitude: Array, sigma: float, factor: float, *, n: int = 1, seed: int = 0
+) -> Array:
+    """Magnitude of images whose Fourier transform is padded to `factor` times their size."""
+    rng = np.random.default_rng(seed)
+    size = amplitude.shape[:2]
+    large = [2 * round(factor * s / 2) for s in size]
+    pad = [((b - s) // 2, b - s - (b - s) // 2) for b, s in zip(large, size, strict=True)]
+    power = np.zeros((*large, *amplitude.shape[2:]))
+    for channel in range(n):
+        noise = rng.standard_normal((2, *amplitude.shape))
+        image = (amplitude if channel == 0 else 0.0) + sigma * (noise[0] + 1j * noise[1])
+        spectrum = np.fft.fftshift(np.fft.fft2(image, axes=(0, 1)), axes=(0, 1))
+        padded = np.fft.ifftshift(np.pad(spectrum, [*pad, (0, 0), (0, 0)]), axes=(0, 1))
+        fine = np.fft.ifft2(padded, axes=(0, 1)) * np.prod(large) / np.prod(size)
+        power += np.abs(fine) ** 2
+    return np.sqrt(power)
+
+
 def stack_of(magnitude: Array, times_ms: Array) -> EchoStack:
     grid = Grid(shape=magnitude.shape[:3], affine_mm=np.diag([3.0, 3.0, 8.0, 1.0]))
     return EchoStack(magnitude=magnitude, echo_times_ms=np.asarray(times_ms, float), grid=grid)
@@ -68,7 +95,7 @@ def abdomen(
     y = np.linspace(-1, 1, shape[1])[None, :, None]
     z = np.zeros((1, 1, shape[2]))
     body = (x**2 + (y / 0.8) ** 2 + z < 0.64) | (not in_air)
-    liver = ((x - 0.3) ** 2 + y**2 + z < 0.1225) & body
+    liver = liver_mask(shape) & body
     rate = np.where(liver, liver_per_s, body_per_s)[..., None]
     t = np.asarray(times_ms, float) * 1e-3
     curve = (1 - fast_share) * np.exp(-rate * t) + fast_share * np.exp(-4 * rate * t)

@@ -25,6 +25,51 @@ def test_sigma_and_channels_are_found(n: int) -> None:
     assert found.relative_sd < 0.01
 
 
+# Methods sheet 1.3: n, mean / sigma (published by Constantinides 1997), SD / sigma (Koay 2006).
+BACKGROUND = [
+    (1, 1.2533141, 0.655136), (2, 1.8799712, 0.682428), (3, 2.3499640, 0.691136),
+    (4, 2.7416247, 0.695337), (6, 3.3927605, 0.699411), (8, 3.9380256, 0.701394),
+    (12, 4.8482279, 0.703339), (16, 5.6128394, 0.704297), (20, 6.2851542, 0.704866),
+    (24, 6.8922152, 0.705244), (32, 7.9688122, 0.705714), (64, 11.291633, 0.706413),
+]  # fmt: skip
+
+
+@pytest.mark.parametrize(("n", "mean", "sd"), BACKGROUND)
+def test_sigma_goes_with_the_published_mean_and_sd_of_the_air(
+    n: int, mean: float, sd: float
+) -> None:
+    # Sheet 1.5: root mean square, mean and SD of the background agree if n is right.
+    scene = abdomen()
+    magnitude = scene.magnitude(4.0, n=n, seed=n)
+    air = magnitude[~scene.body]
+    found = sigma_from_air(scene.stack(magnitude))
+    assert found.n_channels == pytest.approx(n, abs=max(0.0, 0.02 * n))
+    assert found.sigma is not None
+    # A number of channels one off in 64 moves sigma by 1/128.
+    assert found.sigma == pytest.approx(air.mean() / mean, rel=0.012)
+    assert found.sigma == pytest.approx(air.std() / sd, rel=0.012)
+
+
+@pytest.mark.parametrize("n", [1, 8, 32])
+@pytest.mark.parametrize("rate", [300.0, 800.0, 1500.0])
+@pytest.mark.parametrize("snr", [20.0, 50.0])
+def test_a_dark_liver_among_the_air_makes_no_constant(n: int, rate: float, snr: float) -> None:
+    # Its first echoes skew the noise of many channels: that once passed for an added constant.
+    scene = abdomen(liver_per_s=rate, shape=(96, 80, 6))
+    assert sigma_from_air(scene.stack(scene.magnitude(400.0 / snr, n=n))).added_constant == 0.0
+
+
+def test_what_a_mask_leaves_of_the_air_is_marked_as_partial() -> None:
+    scene = abdomen()
+    magnitude = scene.magnitude(4.0, n=4)
+    x, y = (np.linspace(-1, 1, size) for size in SHAPE[:2])
+    magnitude[x[:, None] ** 2 + y**2 > 1.1] = 0.0
+    found = sigma_from_air(scene.stack(magnitude))
+    assert found.is_partial
+    assert (found.n_channels, found.sigma) == (4, pytest.approx(4.0, rel=0.02))
+    assert not sigma_from_air(scene.stack(scene.magnitude(4.0))).is_partial
+
+
 @pytest.mark.parametrize("times", [[2.4, 4.8], [2.4, 4.8, 7.2], [1.2, 2.4, 3.6, 4.8]])
 def test_few_echoes_do(times: list[float]) -> None:
     scene = abdomen(times_ms=np.array(times))

@@ -63,7 +63,9 @@ def test_masked_air_is_replaced_by_residuals() -> None:
     assert result.noise.method == "residual"
     assert result.noise.sigma == pytest.approx(S0 / 50.0, rel=0.05)
     assert result.regions[0].summary.r2star.value == pytest.approx(300.0, rel=0.02)
-    assert "channels-not-tested" in codes(result, "note")
+    # The floor in dark echoes of the organ tells that there is one channel.
+    assert result.noise.channels_between is None
+    assert not codes(result, "note") & {"channels-not-tested"}
 
 
 def test_air_that_is_not_the_tissues_noise_is_told_where_it_matters() -> None:
@@ -140,7 +142,7 @@ def test_several_liver_regions_are_pooled_and_the_whole_liver_leads() -> None:
 def test_every_estimator_runs_and_plain_ones_carry_a_caution(estimator: str) -> None:
     result = assess(make_scene(200.0, snr=200.0), estimator=estimator)
     assert result.regions[0].summary.r2star.value == pytest.approx(200.0, rel=0.03)
-    plain = estimator not in ("rician-ml", "first-moment")
+    plain = estimator not in ("rician-ml", "first-moment", "weighted-first-moment")
     assert ("estimator-for-comparison" in codes(result, "caution")) == plain
 
 
@@ -218,16 +220,26 @@ def test_two_kinds_of_tissue_are_told(share: float) -> None:
     assert "uneven-iron" in codes(result, "caution")
 
 
-def test_a_result_that_hangs_on_unknown_coils_is_refused() -> None:
+def test_dark_tissue_tells_unknown_coils() -> None:
     """Eight channels, background masked: read as one channel, 20 mg/g would be far too low."""
-    scene = make_scene(500.0, snr=30.0, n_channels=8)
+    scene = make_scene(500.0, snr=60.0, n_channels=8)
+    masked = np.where(scene.body[..., None], scene.stack.magnitude, 0.0)
+    result = assess(scene.with_magnitude(masked))
+    assert result.noise is not None
+    assert result.noise.n_channels == 8
+    assert result.regions[0].summary.r2star.value == pytest.approx(500.0, rel=0.02)
+
+
+def test_a_result_that_hangs_on_unknown_coils_is_refused() -> None:
+    """Three echoes, none of them dark, and a masked background leave the number open."""
+    scene = make_scene(300.0, snr=20.0, times_ms=np.array([1.2, 2.4, 3.6]))
     masked = np.where(scene.body[..., None], scene.stack.magnitude, 0.0)
     with pytest.raises(StudyRefused) as refusal:
         assess(scene.with_magnitude(masked))
     assert refusal.value.findings[0].code == "channels-decide"
-    known = assess(scene.with_magnitude(masked), n_channels=8)
-    assert known.regions[0].summary.r2star.qualifier == ">"
-    assert known.regions[0].summary.r2star.value < 500.0
+    known = assess(scene.with_magnitude(masked), n_channels=1)
+    assert known.noise is not None
+    assert known.noise.sigma == pytest.approx(S0 / 20.0, rel=0.05)
 
 
 def test_a_few_values_below_zero_are_no_phase() -> None:

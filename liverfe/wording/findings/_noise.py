@@ -28,17 +28,26 @@ NOISE_FINDINGS: dict[str, FindingWording] = {
     "channels-not-tested": FindingWording(
         level="note",
         text=(
-            "There is no background to tell how many coil channels were combined; one is assumed "
-            "for the noise floor."
+            "There is no background to tell how many coil channels were combined, and the tissue "
+            "leaves it open between {fewest} and {most}; {assumed} is taken for the noise floor."
         ),
         effect="With 16 channels taken as one, 15 mg/g reads 11.5.",
         remedy="State n_channels in a method file if the reconstruction is known.",
+    ),
+    "noise-varies": FindingWording(
+        level="note",
+        text=(
+            "The noise varies over the body, by a factor of {span}, as parallel imaging makes it; "
+            "each voxel is measured with the noise at its place."
+        ),
+        effect="Where one sigma for all is too high by half, 30 mg/g reads 36.",
+        remedy="None needed.",
     ),
     "channels-matter": FindingWording(
         level="caution",
         text=(
             "Region {region}: the number of coil channels is not known and matters here: with "
-            "{other} channels instead of one R2* would be {shift} % different."
+            "{other} instead of {assumed} R2* would be {shift} % different."
         ),
         effect="The noise floor of many channels is higher; high iron then reads low.",
         remedy="Ask for adaptive coil combination, or state n_channels in a method file.",
@@ -47,7 +56,7 @@ NOISE_FINDINGS: dict[str, FindingWording] = {
         level="stop",
         text=(
             "Region {region}: the number of coil channels is not known and decides the result: "
-            "with {other} channels instead of one R2* would be {shift} % different."
+            "with {other} instead of {assumed} R2* would be {shift} % different."
         ),
         effect="The noise floor of eight channels taken for that of one turns 20 mg/g into 6.",
         remedy=(
