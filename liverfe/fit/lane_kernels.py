@@ -27,7 +27,14 @@ from liverfe.fit.kernels import (
     NOT_FITTED,
     UNRESOLVED,
 )
-from liverfe.fit.lane_functions import exp, fourth_degree, rough_log, sixth_degree
+from liverfe.fit.lane_functions import (
+    amplitude_at,
+    exp,
+    fifth_degree,
+    fourth_degree,
+    rough_log,
+    sixth_degree,
+)
 from liverfe.fit.lanes import (
     WIDTH,
     any_above,
@@ -36,9 +43,11 @@ from liverfe.fit.lanes import (
     inner_lanes,
     larger,
     load,
+    negative,
     root,
     smaller,
     store,
+    turn,
     where_above,
 )
 
@@ -79,8 +88,6 @@ class LaneNoise(NamedTuple):
         Effective number of channels.
     shortfall, excess, information : ndarray of float32, shape (2, D + 1)
         Quotients, see `SignalRationals`.
-    per_z, per_a : float
-        One over their scales.
     least_power, least_first : float
         Summed power and first echo (sigma², sigma) below which a voxel has no signal.
     """
@@ -89,20 +96,26 @@ class LaneNoise(NamedTuple):
     shortfall: Array32
     excess: Array32
     information: Array32
-    per_z: float
-    per_a: float
     least_power: float
     least_first: float
 
 
 @inner_lanes
-def _take_in(signal: Array32, sigma: Array, first_row: int, n_here: int, m: Array32) -> None:
-    """Sixteen rows in units of sigma, echo by echo; the last row fills up the lanes."""
+def _take_in(signal: Array32, sigma: Array, first_row: int, m: Array32, scales: Array32) -> None:
+    """Sixteen rows in units of sigma, echo by echo; the last row of all fills up the lanes."""
+    n_voxels, n_echoes = signal.shape
     for lane in range(WIDTH):
-        v = first_row + min(lane, n_here - 1)
-        scale = np.float32(1.0 / (sigma[v] if len(sigma) > 1 else sigma[0]))
-        for e in range(signal.shape[1]):
-            m[e * WIDTH + lane] = signal[v, e] * scale
+        v = min(first_row + lane, n_voxels - 1)
+        scales[lane] = 1.0 / (sigma[v] if len(sigma) > 1 else sigma[0])
+    if n_echoes <= WIDTH and (first_row + WIDTH) * n_echoes + WIDTH <= signal.size:
+        turn(signal, first_row * n_echoes, n_echoes, n_echoes, m)
+    else:
+        for lane in range(WIDTH):
+            for e in range(n_echoes):
+                m[e * WIDTH + lane] = signal[min(first_row + lane, n_voxels - 1), e]
+    scale = load(scales, 0)
+    for e in range(n_echoes):
+        store(m, e * WIDTH, load(m, e * WIDTH) * scale)
 
 
 @inner_lanes
@@ -149,34 +162,38 @@ def _start(m_all: Array32, times: Array32, noise: LaneNoise) -> Any:
 
 
 @inner_lanes
-def _newton_sums(m_all: Array32, times: Array32, noise: LaneNoise, log_a: Any, rate: Any) -> Any:
+def _newton_sums(
+    m_all: Array32, times: Array32, is_even: bool, noise: LaneNoise, log_a: Any, rate: Any
+) -> Any:
     """Gradient of the log-likelihood and minus its second derivatives."""
     zero, two = everywhere(0.0), everywhere(2.0)
     more_channels = everywhere(2.0 * noise.n - 2.0)
-    g0, g1, h00, h01, h11 = zero, zero, zero, zero, zero
+    g0, g1, h00, h01, h11, a = zero, zero, zero, zero, zero, zero
+    factor = exp(zero - rate * everywhere(times[1] - times[0]))
     for e in range(len(times)):
         m = load(m_all, e * WIDTH)
         t = everywhere(times[e] - times[0])
-        a = exp(log_a - rate * t)
+        a = amplitude_at(e, times, is_even, log_a, rate, a, factor)
         z = m * a
-        x = z * everywhere(noise.per_z)
-        w = sixth_degree(noise.shortfall[0], x) / sixth_degree(noise.shortfall[1], x)
-        pull = fused(a, m - a, zero - w)
+        w = sixth_degree(noise.shortfall[0], z) / sixth_degree(noise.shortfall[1], z)
+        pull = fused(a, m - a, negative(w))
         # Minus the second derivative by ln a, from the recurrence of the Bessel functions.
-        h = fused(two * a, a, fused(more_channels, z - w, w * (w - two * z)))
+        h = fused(two * a, a, w * fused(negative(two), z, w))
+        if noise.n > 1:
+            h = fused(more_channels, z - w, h)
         g0 = g0 + pull
-        g1 = g1 - t * pull
+        g1 = fused(t, pull, g1)
         h00 = h00 + h
         ht = h * t
-        h01 = h01 - ht
+        h01 = h01 + ht
         h11 = fused(ht, t, h11)
-    return g0, g1, h00, h01, h11
+    return g0, negative(g1), h00, negative(h01), h11
 
 
 @inner_lanes
 def _climb(
-    m_all: Array32, times: Array32, noise: LaneNoise, max_rate: float, most_steps: int,
-    log_a: Any, rate: Any, moving: Any,
+    m_all: Array32, times: Array32, is_even: bool, noise: LaneNoise, max_rate: float,
+    most_steps: int, log_a: Any, rate: Any, moving: Any,
 ) -> Any:  # fmt: skip
     """Newton steps of lanes that move; returns where they end, and who settled or moves still."""
     zero, one, half = everywhere(0.0), everywhere(1.0), everywhere(0.5)
@@ -185,7 +202,7 @@ def _climb(
     rate = smaller(rate, fastest)
     settled = zero
     for _ in range(most_steps):
-        g0, g1, h00, h01, h11 = _newton_sums(m_all, times, noise, log_a, rate)
+        g0, g1, h00, h01, h11 = _newton_sums(m_all, times, is_even, noise, log_a, rate)
         det = h00 * h11 - h01 * h01
         inverse = one / det
         step0 = (h11 * g0 - h01 * g1) * inverse
@@ -225,26 +242,29 @@ def _climb(
 
 
 @inner_lanes
-def _judge(m_all: Array32, times: Array32, noise: LaneNoise, log_a: Any, rate: Any) -> Any:
+def _judge(
+    m_all: Array32, times: Array32, is_even: bool, noise: LaneNoise, log_a: Any, rate: Any
+) -> Any:
     """Standard error and misfit at the end, by the expected magnitude and its information."""
     zero, two, two_n = everywhere(0.0), everywhere(2.0), everywhere(2.0 * noise.n)
-    f00, f01, f11, chi2 = zero, zero, zero, zero
+    f00, f01, f11, chi2, a = zero, zero, zero, zero, zero
+    factor = exp(zero - rate * everywhere(times[1] - times[0]))
     for e in range(len(times)):
         m = load(m_all, e * WIDTH)
         t = everywhere(times[e] - times[0])
-        a = exp(log_a - rate * t)
-        x = a * everywhere(noise.per_a)
-        x2 = x * x
-        share = fourth_degree(noise.information[0], x2) / fourth_degree(noise.information[1], x2)
-        weight = a * a * share
+        a = amplitude_at(e, times, is_even, log_a, rate, a, factor)
+        a2 = a * a
+        share = fourth_degree(noise.information[0], a2) / fourth_degree(noise.information[1], a2)
+        weight = a2 * share
         f00 = f00 + weight
         wt = weight * t
-        f01 = f01 - wt
+        f01 = f01 + wt
         f11 = fused(wt, t, f11)
         # With the excess d = p / q: (m - a - d)² / (2n - d (2a + d)), by one division.
-        p, q = sixth_degree(noise.excess[0], x), sixth_degree(noise.excess[1], x)
-        off = (m - a) * q - p
-        chi2 = chi2 + off * off / (two_n * q * q - p * fused(two * a, q, p))
+        p, q = fifth_degree(noise.excess[0], a), fifth_degree(noise.excess[1], a)
+        off = fused(m - a, q, negative(p))
+        spread = fused(two_n * q, q, negative(p) * fused(two * a, q, p))
+        chi2 = chi2 + off * off / spread
     det = f00 * f11 - f01 * f01
     return root(f00 / larger(det, everywhere(1e-30))), chi2
 
@@ -285,20 +305,21 @@ def _write(
 
 @compiled(nogil=True, error_model="numpy", no_cfunc_wrapper=True)
 def fit_in_lanes(
-    signal: Array32, times: Array32, sigma: Array, noise: LaneNoise, max_rate: float,
-    again: bool, m_all: Array32, ends: Array32, rate_out: Array32, s0_out: Array32,
+    signal: Array32, times: Array32, is_even: bool, sigma: Array, noise: LaneNoise,
+    max_rate: float, again: bool, m_all: Array32, ends: Array32, rate_out: Array32, s0_out: Array32,
     se_out: Array32, chi2_out: Array32, outcome_out: NDArray[np.uint8],
 ) -> None:  # fmt: skip
     """Fit each row of `signal`, or go on where it stood (`again`); every output row is written.
 
     A row that has not settled gets the outcome UNSETTLED, and where it stands (R2* in 1/ms, ln of
     the amplitude at the first echo) in `rate_out` and `se_out`; what cannot be fitted here gets
-    LEFT_TO_ENGINE. `m_all` (16 E numbers) and `ends` (5 x 16) are scratch.
+    LEFT_TO_ENGINE. `is_even` tells that the echoes are evenly spaced. `m_all` (16 E numbers) and
+    `ends` (5 x 16) are scratch.
     """
     n_voxels = len(signal)
     for first_row in range(0, n_voxels, WIDTH):
         n_here = min(WIDTH, n_voxels - first_row)
-        _take_in(signal, sigma, first_row, n_here, m_all)
+        _take_in(signal, sigma, first_row, m_all, ends)
         log_a, rate, valid, silent, moving = _start(m_all, times, noise)
         most_steps = FIRST_STEPS
         if again:
@@ -308,9 +329,9 @@ def fit_in_lanes(
                 ends[WIDTH + lane] = se_out[first_row + min(lane, n_here - 1)]
             rate, log_a = load(ends, 0), load(ends, WIDTH)
         log_a, rate, settled, moving = _climb(
-            m_all, times, noise, max_rate, most_steps, log_a, rate, moving
+            m_all, times, is_even, noise, max_rate, most_steps, log_a, rate, moving
         )
-        errors, chi2 = _judge(m_all, times, noise, log_a, rate)
+        errors, chi2 = _judge(m_all, times, is_even, noise, log_a, rate)
         _write(ends, times, max_rate, log_a, rate, settled, moving, silent, valid, errors, chi2)
         for lane in range(n_here):
             rate_out[first_row + lane] = ends[lane]

@@ -120,6 +120,43 @@ def store(typingctx: Any, array: Any, place: Any, value: Any) -> Any:
 
 
 @intrinsic
+def turn(typingctx: Any, rows: Any, place: Any, stride: Any, n_columns: Any, columns: Any) -> Any:
+    """Turn sixteen rows of sixteen numbers into columns, and write the first `n_columns` of these.
+
+    Row k starts at element ``place + k * stride`` of the contiguous array `rows`; sixteen numbers
+    from there on are read, whether they belong to it or not.
+    """
+
+    def build(context: Any, builder: Any, sig: Any, args: Any) -> Any:
+        at, step, n = (context.cast(builder, args[k], sig.args[k], types.intp) for k in (1, 2, 3))
+        lines = []
+        for k in range(WIDTH):
+            here = builder.add(at, builder.mul(step, ir.Constant(at.type, k)))
+            where = _pointer(context, builder, sig.args[0], args[0], here)
+            lines.append(builder.load(where, align=4))
+        block = 1
+        while block < WIDTH:  # exchange squares of side `block`, then twice as large ones
+            low = [j if not j & block else WIDTH + j - block for j in range(WIDTH)]
+            high = [j + block if not j & block else WIDTH + j for j in range(WIDTH)]
+            for k in range(WIDTH):
+                if not k & block:
+                    one, other = lines[k], lines[k + block]
+                    for line, picks in ((k, low), (k + block, high)):
+                        mask = ir.Constant(_INTS, picks)
+                        lines[line] = builder.shuffle_vector(one, other, mask)
+            block *= 2
+        for k in range(WIDTH):
+            wanted = builder.icmp_signed(">", n, ir.Constant(n.type, k))
+            with builder.if_then(wanted, likely=True):
+                here = ir.Constant(at.type, k * WIDTH)
+                where = _pointer(context, builder, sig.args[4], args[4], here)
+                builder.store(lines[k], where, align=4)
+        return context.get_dummy_value()
+
+    return types.void(rows, place, stride, n_columns, columns), build
+
+
+@intrinsic
 def fused(typingctx: Any, a: Any, b: Any, c: Any) -> Any:
     """``a * b + c``, rounded once."""
 
@@ -127,6 +164,16 @@ def fused(typingctx: Any, a: Any, b: Any, c: Any) -> Any:
         return _call(builder, "llvm.fma", *args)
 
     return lanes_type(a, b, c), build
+
+
+@intrinsic
+def negative(typingctx: Any, a: Any) -> Any:
+    """Minus `a`: nothing is left of it inside `fused`."""
+
+    def build(context: Any, builder: Any, sig: Any, args: Any) -> Any:
+        return builder.fneg(args[0])
+
+    return lanes_type(a), build
 
 
 @intrinsic

@@ -21,8 +21,9 @@ from liverfe.fit import signal
 Array = NDArray[np.float64]
 Array32 = NDArray[np.float32]
 
-_DEGREE, _DEGREE_OF_INFORMATION = 6, 4
-"""Of numerator and denominator; information only decides how a standard error is told."""
+_OF_SHORTFALL, _OF_EXCESS, _OF_INFORMATION = 6, 5, 4
+"""Degrees of numerator and denominator: the first decides where a fit ends, the others only how
+misfit and standard error are told."""
 _NODES = 200
 _ROUNDS = 25
 _CLOSEST_TO_INFINITY = 1.0 - 1e-7
@@ -36,53 +37,53 @@ class SignalRationals:
     Attributes
     ----------
     shortfall : ndarray of float32, shape (2, 7)
-        ``z (1 - I_n(z) / I_{n-1}(z))`` over ``x = z / z_scale``: 0 at 0, n - 1/2 at infinity.
-    excess : ndarray of float32, shape (2, 7)
-        `signal.expected_excess` over ``x = a / a_scale``.
+        ``z (1 - I_n(z) / I_{n-1}(z))`` over z: 0 at 0, n - 1/2 at infinity.
+    excess : ndarray of float32, shape (2, 6)
+        `signal.expected_excess` over a.
     information : ndarray of float32, shape (2, 5)
-        `signal.information` over ``x = a² / a_scale²``.
-    z_scale, a_scale : float
-        The scales.
+        `signal.information` over a².
     """
 
     shortfall: Array32
     excess: Array32
     information: Array32
-    z_scale: float
-    a_scale: float
 
 
 @lru_cache(maxsize=8)
 def signal_rationals(n: int) -> SignalRationals:
     """Fit (once) the quotients for `n` effective channels."""
-    z_scale, a_scale = 2.0 * n, float(np.sqrt(2.0 * n))
-
-    def shortfall(x: Array) -> Array:
-        z = z_scale * x
-        return np.asarray(z * (1.0 - signal.bessel_ratio(z, n)))
-
     return SignalRationals(
-        shortfall=_quotient(shortfall, _DEGREE, starts_at_zero=True),
-        excess=_quotient(
-            lambda x: signal.expected_excess(a_scale * x, n),
-            _DEGREE,
-            starts_at_zero=False,
-            matters=2.0 * a_scale,
-        ),
-        information=_quotient(
-            lambda x: signal.information(a_scale * np.sqrt(x), n),
-            _DEGREE_OF_INFORMATION,
+        shortfall=_quotient(
+            lambda z: z * (1.0 - signal.bessel_ratio(z, n)),
+            _OF_SHORTFALL,
+            2.0 * n,
             starts_at_zero=True,
         ),
-        z_scale=z_scale,
-        a_scale=a_scale,
+        excess=_quotient(
+            lambda a: signal.expected_excess(a, n),
+            _OF_EXCESS,
+            float(np.sqrt(2.0 * n)),
+            starts_at_zero=False,
+            matters=2.0,
+        ),
+        information=_quotient(
+            lambda a2: signal.information(np.sqrt(a2), n),
+            _OF_INFORMATION,
+            2.0 * n,
+            starts_at_zero=True,
+        ),
     )
 
 
 def _quotient(
-    function: Callable[[Array], Array], degree: int, *, starts_at_zero: bool, matters: float = 0.0
+    function: Callable[[Array], Array],
+    degree: int,
+    scale: float,
+    *,
+    starts_at_zero: bool,
+    matters: float = 0.0,
 ) -> Array32:
-    """Fit ``p(x) / q(x)`` on x from 0 to infinity, in ``u = x / (x + 1)``.
+    """Fit ``p(x) / q(x)`` on x from 0 to infinity, in ``u = x / (x + scale)``.
 
     The linearised equations ``p - y q = 0`` are solved with the last denominator as weight, and
     points of large error gain weight from round to round, which levels the error out: the error
@@ -90,8 +91,9 @@ def _quotient(
     """
     u = 0.5 * (1.0 - np.cos(np.pi * (np.arange(_NODES) + 0.5) / _NODES))
     u = u[u < _CLOSEST_TO_INFINITY]
-    y = function(u / (1.0 - u))
-    cost = 1.0 + matters * u / (1.0 - u)
+    x = scale * u / (1.0 - u)
+    y = function(x)
+    cost = 1.0 + matters * x
     basis = chebyshev.chebvander(2.0 * u - 1.0, degree)
     above = basis[:, :degree] * u[:, None] if starts_at_zero else basis
     below = np.ones_like(u)
@@ -111,6 +113,7 @@ def _quotient(
     numerator = _in_x(best[: above.shape[1]], degree, times_u=starts_at_zero)
     denominator = _in_x(np.append(1.0, best[above.shape[1] :]), degree, times_u=False)
     together = np.stack([numerator, denominator]) / denominator[0]
+    together = together / scale ** np.arange(degree + 1)
     return np.asarray(together[:, ::-1], dtype=np.float32)
 
 

@@ -19,6 +19,9 @@ from liverfe.fit.rationals import signal_rationals
 from liverfe.fit.rows import DecayRows
 from liverfe.fit.signal_models import max_rate_per_ms, mono_exponential
 
+_EVEN = 1e-6
+"""Echo spacings that differ by less than this share are the same."""
+
 
 def fit_rician_ml(
     signal: NDArray[np.float32],
@@ -102,12 +105,12 @@ def _fit_in_lanes(
         shortfall=quotients.shortfall,
         excess=quotients.excess,
         information=quotients.information,
-        per_z=1.0 / quotients.z_scale,
-        per_a=1.0 / quotients.a_scale,
         least_power=float(no_signal_powers(len(times), n)[-1]),
         least_first=no_signal_first(n),
     )
     max_rate = max_rate_per_ms(echo_times_ms)
+    spacing = np.diff(echo_times_ms)
+    is_even = bool(np.ptp(spacing) <= _EVEN * spacing[0])
 
     def work(block: slice) -> None:
         fit_block(
@@ -129,6 +132,7 @@ def _fit_in_lanes(
         fit_in_lanes(
             as_argument(some),
             as_argument(times),
+            is_even,
             as_argument(its_sigma),
             noise,
             max_rate,
