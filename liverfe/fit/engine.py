@@ -11,7 +11,7 @@ from scipy.special import chdtri
 from liverfe.fit.blocks import run_in_blocks
 from liverfe.fit.compiled import as_argument
 from liverfe.fit.kernels import fit_voxels
-from liverfe.fit.likelihood_kernels import Workspace
+from liverfe.fit.likelihood_kernels import work_array
 from liverfe.fit.signal_models import SignalModel, echo_times_of
 from liverfe.fit.tables import signal_tables
 
@@ -116,9 +116,7 @@ def fit_decays(
             noise,
             as_argument(power),
             first,
-            np.empty(len(times)),
-            np.empty(len(times), dtype=bool),
-            Workspace.of(len(times), n_p),
+            work_array(len(times), n_p),
             fits.parameters[block],
             fits.standard_errors[block],
             fits.log_likelihood[block],

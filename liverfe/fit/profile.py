@@ -7,6 +7,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from liverfe.fit.blocks import run_in_blocks
 from liverfe.fit.compiled import as_argument
+from liverfe.fit.likelihood_kernels import work_array
 from liverfe.fit.profile_kernels import profile_voxels
 from liverfe.fit.tables import signal_tables
 
@@ -48,11 +49,10 @@ def profile_r2star(
     out = np.full((len(signal), len(rates)), np.nan)
 
     def work(block: slice) -> None:
-        room, used = np.empty((2, len(times))), np.ones(len(times), dtype=bool)
         some = sigma if len(sigma) == 1 else sigma[block]
         profile_voxels(
             as_argument(signal[block]), as_argument(times), as_argument(rates), as_argument(some),
-            noise, room, used, out[block],
+            noise, work_array(len(times), 2), out[block],
         )  # fmt: skip
 
     run_in_blocks(work, len(signal))

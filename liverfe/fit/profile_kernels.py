@@ -9,8 +9,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from liverfe.fit.compiled import compiled
-from liverfe.fit.likelihood_kernels import data_terms, inner, look_up_one
-from liverfe.fit.tables import KernelTables
+from liverfe.fit.likelihood_kernels import AMPLITUDES, USED, M, data_terms, inner, look_up_one
+from liverfe.fit.tables import INFORMATION, KERNEL, RATIO, KernelTables
 
 Array = NDArray[np.float64]
 Array32 = NDArray[np.float32]
@@ -33,20 +33,22 @@ def _at(m: Array, decay: Array, log_s0: float, noise: KernelTables) -> tuple[flo
         a = s0 * decay[e]
         z = m[e] * a
         u = z / (z + noise.product_scale)
-        value += look_up_one(noise.kernel, u) - 0.5 * (a - m[e]) ** 2
+        value += look_up_one(noise, KERNEL, u) - 0.5 * (a - m[e]) ** 2
         value -= (noise.n - 0.5) * np.log(z + noise.product_scale)
-        score += a * (m[e] * look_up_one(noise.ratio, u) - a)
-        info += a * a * look_up_one(noise.information, a / (a + noise.amplitude_scale))
+        score += a * (m[e] * look_up_one(noise, RATIO, u) - a)
+        info += a * a * look_up_one(noise, INFORMATION, a / (a + noise.amplitude_scale))
     return value, score, info
 
 
 @compiled(nogil=True, error_model="numpy", no_cfunc_wrapper=True)
 def profile_voxels(
-    signal: Array32, times: Array, rates: Array, sigma: Array, noise: KernelTables, room: Array,
-    used: NDArray[np.bool_], out: Array,
+    signal: Array32, times: Array, rates: Array, sigma: Array, noise: KernelTables, work: Array,
+    out: Array,
 ) -> None:  # fmt: skip
-    """Fill `out` for each voxel and rate; rows of `room` are scratch, `used` says all."""
-    m, decay = room[0], room[1]
+    """Fill `out` for each voxel and rate; every echo counts."""
+    m, decay = work[M], work[AMPLITUDES]
+    for e in range(len(times)):
+        work[USED, e] = 1.0
     for v in range(len(signal)):
         scale, fine, power = 1.0 / sigma[v % len(sigma)], True, 0.0
         for e in range(len(times)):
@@ -55,7 +57,7 @@ def profile_voxels(
             fine = fine and m[e] >= 0.0
         if not fine or not np.isfinite(power):
             continue
-        constant = data_terms(m, used, sigma[v % len(sigma)], noise.n)
+        constant = data_terms(work, len(times), sigma[v % len(sigma)], noise.n)
         for k in range(len(rates)):
             above, below = 0.0, 0.0
             for e in range(len(times)):

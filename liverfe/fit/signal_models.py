@@ -157,13 +157,13 @@ def _bounds(t: Array, own: tuple[tuple[float, float], ...]) -> tuple[Array, Arra
     return np.array([low for low, _ in pairs]), np.array([high for _, high in pairs])
 
 
-def log_amplitude(model: SignalModel, p: Array, e: int) -> float:
-    """ln A in sigma at echo `e`, for compiled code."""
+def log_amplitude(model: SignalModel, work: Array, row: int, e: int) -> float:
+    """ln A in sigma at echo `e` for the parameters in a row of `work`, for compiled code."""
     raise NotImplementedError(f"only compiled code asks {type(model).__name__}")
 
 
-def fill_slopes(model: SignalModel, p: Array, e: int, out: Array) -> None:
-    """Derivative of ln A at echo `e` by each parameter, for compiled code."""
+def fill_slopes(model: SignalModel, work: Array, row: int, e: int, out: int) -> None:
+    """Derivatives of ln A at echo `e`, into row `out` of `work`, for compiled code."""
     raise NotImplementedError(f"only compiled code asks {type(model).__name__}")
 
 
@@ -172,46 +172,45 @@ def _is(kind: Any, of: type) -> bool:
 
 
 @overload(log_amplitude)
-def _log_amplitude(model: Any, p: Any, e: Any) -> Any:
+def _log_amplitude(model: Any, work: Any, row: Any, e: Any) -> Any:
     if _is(model, LogLinearDecay):
 
-        def linear(model: Any, p: Any, e: Any) -> Any:
+        def linear(model: Any, work: Any, row: Any, e: Any) -> Any:
             total = 0.0
-            for k in range(len(p)):
-                total += p[k] * model.design[k, e]
+            for k in range(len(model.design)):
+                total += work[row, k] * model.design[k, e]
             return total
 
         return linear
     if _is(model, FatWaterDecay):
 
-        def fat_water(model: Any, p: Any, e: Any) -> Any:
-            x = 1.0 - p[2] + p[2] * model.real[e]
-            y = p[2] * model.imaginary[e]
+        def fat_water(model: Any, work: Any, row: Any, e: Any) -> Any:
+            fat = work[row, 2]
+            x, y = 1.0 - fat + fat * model.real[e], fat * model.imaginary[e]
             size = max(x * x + y * y, _DARKEST * _DARKEST)
-            return p[0] - p[1] * model.times_ms[e] + 0.5 * np.log(size)
+            return work[row, 0] - work[row, 1] * model.times_ms[e] + 0.5 * np.log(size)
 
         return fat_water
     return None
 
 
 @overload(fill_slopes)
-def _fill_slopes(model: Any, p: Any, e: Any, out: Any) -> Any:
+def _fill_slopes(model: Any, work: Any, row: Any, e: Any, out: Any) -> Any:
     if _is(model, LogLinearDecay):
 
-        def linear(model: Any, p: Any, e: Any, out: Any) -> Any:
-            for k in range(len(p)):
-                out[k] = model.design[k, e]
+        def linear(model: Any, work: Any, row: Any, e: Any, out: Any) -> Any:
+            for k in range(len(model.design)):
+                work[out, k] = model.design[k, e]
 
         return linear
     if _is(model, FatWaterDecay):
 
-        def fat_water(model: Any, p: Any, e: Any, out: Any) -> Any:
-            out[0] = 1.0
-            out[1] = -model.times_ms[e]
-            x = 1.0 - p[2] + p[2] * model.real[e]
-            y = p[2] * model.imaginary[e]
+        def fat_water(model: Any, work: Any, row: Any, e: Any, out: Any) -> Any:
+            fat = work[row, 2]
+            x, y = 1.0 - fat + fat * model.real[e], fat * model.imaginary[e]
             size = max(x * x + y * y, _DARKEST * _DARKEST)
-            out[2] = (x * (model.real[e] - 1.0) + y * model.imaginary[e]) / size
+            work[out, 0], work[out, 1] = 1.0, -model.times_ms[e]
+            work[out, 2] = (x * (model.real[e] - 1.0) + y * model.imaginary[e]) / size
 
         return fat_water
     return None
