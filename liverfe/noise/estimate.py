@@ -19,6 +19,9 @@ _TISSUE_LOWER, _TISSUE_HIGHER = 0.015, 0.04
 lower of two is nearer the truth: ghosts, and the ringing of sharp edges (8 % where noise is low),
 only ever add to air; fat and borders only ever add to the residuals."""
 _BY_CHANCE = 4.0
+_THE_SAME = 0.03
+"""Whole air whose sigma is the tissue's to this share lies in the same noise: its number of
+channels, known to a few percent, is not given up for what dark echoes guess."""
 _DIFFER = 0.10
 """Beyond this share a third witness is heard."""
 
@@ -99,8 +102,11 @@ def _agree(air: NoiseCandidate, residual: NoiseCandidate, tissue: Tissue) -> boo
         return False
     if residual.sigma is None:
         return not air.is_partial
+    apart = residual.sigma / air.sigma - 1.0
+    if not air.is_partial and abs(apart) <= _THE_SAME:
+        return True
     lower = max(_TISSUE_LOWER, _BY_CHANCE * tissue.residuals(air.n_channels).scatter)
-    agree = -lower <= residual.sigma / air.sigma - 1.0 <= _TISSUE_HIGHER
+    agree = -lower <= apart <= _TISSUE_HIGHER
     return agree and tissue.allows(air.n_channels)
 
 

@@ -61,8 +61,8 @@ def test_the_limit_of_a_voxel_follows_its_own_signal() -> None:
 
 
 def test_a_voxel_with_signal_in_one_echo_is_over_the_limit() -> None:
-    """Two echoes, 12 and 24 ms: at 180 /s the second holds 50 exp(-4.3) = 0.7 sigma. A limit as wide
-    as 50 % must not let its R2* through.
+    """Two echoes, 12 and 24 ms: at 180 /s the second holds 50 exp(-4.3) = 0.7 sigma. A limit as
+    wide as 50 % must not let its R2* through.
     """
     scene = make_scene(180.0, snr=50.0, times_ms=np.array([12.0, 24.0]))
     noise = NoiseLevel(sigma=2.0, n_channels=1, method="given", relative_sd=0.0)

@@ -5,7 +5,11 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
+from liverfe.echoes import EchoStack
 from liverfe.errors import StudyRefused
+from liverfe.grid import Grid
+from liverfe.noise import NoiseLevel
+from liverfe.regions.doubts import check_decay
 from liverfe.study import Method, assess_study
 from tests.scenes import ORGAN_VOXELS, TIMES_MS, Scene, make_scene
 
@@ -105,3 +109,26 @@ def test_fat_and_water_in_and_out_of_phase_are_told() -> None:
     m[scene.organ] *= oscillation
     told = told_codes(scene.with_magnitude(m))
     assert told & {"fat-oscillation", "signal-not-falling", "poor-fit", "decay-slightly-off"}
+
+
+def test_three_and_four_echoes_say_that_they_can_hardly_check_the_model() -> None:
+    for n_echoes, told in ((3, {"few-echoes"}), (4, {"few-echoes"}), (5, set())):
+        times = 1.2 * np.arange(1, n_echoes + 1)
+        scene = make_scene(150.0, snr=80.0, times_ms=times)
+        assert caution_codes(scene) == told, n_echoes
+
+
+def test_means_of_a_few_dark_voxels_do_not_rise_by_chance() -> None:
+    # 20 voxels of heavy iron at SNR 20, three times refused in a hundred before: the second echo is
+    # at the floor, and means of 20 voxels there differ by sigma / 4.5.
+    times = 1.0 + 1.2 * np.arange(12)
+    for seed in range(60):
+        rng = np.random.default_rng(seed)
+        amplitude = 20.0 * np.exp(-1.5 * times)
+        shape = (5, 4, 1, 12)
+        noise = rng.standard_normal((2, *shape))
+        magnitude = np.hypot(amplitude + noise[0], noise[1])
+        grid = Grid(shape=shape[:3], affine_mm=np.diag([3.0, 3.0, 8.0, 1.0]))
+        stack = EchoStack(magnitude=magnitude, echo_times_ms=times, grid=grid)
+        known = NoiseLevel(sigma=1.0, n_channels=1, method="given", relative_sd=0.0)
+        assert check_decay("liver", np.ones(shape[:3], dtype=bool), stack, known) == (), seed

@@ -60,4 +60,4 @@ def test_two_echoes_leave_no_residual() -> None:
 def test_three_echoes_leave_one_direction_and_no_cause() -> None:
     """Nothing can be told from anything else: the misfit is told, and no suspect."""
     bent = scan(100.0, times_ms=np.array([2.0, 6.0, 10.0]), factor=np.array([1.0, 0.8, 1.0]))
-    assert bent.codes == {"poor-fit"}
+    assert bent.codes == {"poor-fit", "few-echoes"}

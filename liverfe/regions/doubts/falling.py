@@ -18,6 +18,9 @@ _SIGNAL_OVER_FLOOR = 1.25
 """Only a mean this far above the noise floor is signal; below, it rises and falls by chance."""
 _RISE_BETWEEN = 0.10
 """An echo this share of the first above an earlier one is told: fat in phase, or a wrong order."""
+_SURE, _SHARED = 5.0, 4.0
+"""A rise is one from so many standard errors on; up to so many voxels share their noise where
+images are interpolated."""
 _SATURATED_SHARE = 0.02
 """Share of voxels with a plateau over two echoes that cannot be chance."""
 _PILED_SHARE = 0.10
@@ -52,7 +55,9 @@ def check_decay(name: str, mask: Mask, stack: EchoStack, noise: NoiseLevel) -> t
     signal = stack.magnitude[mask]
     mean = signal.mean(axis=0, dtype=np.float64)
     floor = _SIGNAL_OVER_FLOOR * noise_floor(noise.n_channels) * noise.sigma
-    if mean[-1] > max(_RISE * mean[0], floor):
+    # Means of few voxels rise by chance; neighbours share their noise.
+    chance = _SURE * noise.sigma * float(np.sqrt(2.0 * _SHARED / len(signal)))
+    if mean[-1] > max(_RISE * mean[0], mean[0] + chance, floor):
         raise StudyRefused(
             Finding.of(
                 "signal-rises", region=name, first=f"{mean[0]:.4g}", last=f"{mean[-1]:.4g}",
@@ -62,7 +67,7 @@ def check_decay(name: str, mask: Mask, stack: EchoStack, noise: NoiseLevel) -> t
     low_so_far = np.minimum.accumulate(mean)
     later = int(np.argmax(mean - low_so_far))
     rise = float(mean[later] - low_so_far[later]) / float(mean[0])
-    if rise > _RISE_BETWEEN and mean[later] > floor:
+    if rise > _RISE_BETWEEN and rise * mean[0] > chance and mean[later] > floor:
         earlier = int(np.argmin(mean[: later + 1]))
         facts = {
             "region": name,

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -126,9 +126,13 @@ def examine_decay(
     if not voxels.any():
         return DecayCheck(findings=known)
     sample = draw_sample(voxels, stack, noise, fit)
-    return examine_sample(
+    check = examine_sample(
         name, sample, stack.acquisition.field_strength_t, known=known, tells=tells, lic=lic
     )
+    if stack.n_echoes >= _FEWEST_ECHOES:
+        return check
+    few = Finding.of("few-echoes", n=stack.n_echoes)
+    return replace(check, findings=(*check.findings, few))
 
 
 def examine_sample(

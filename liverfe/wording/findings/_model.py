@@ -59,6 +59,15 @@ MODEL_FINDINGS: dict[str, FindingWording] = {
         effect="Fat or a wrong echo shifts LIC without a trace.",
         remedy="Acquire at least six echoes.",
     ),
+    "few-echoes": FindingWording(
+        level="caution",
+        text=(
+            "There are {n} echoes only: they can hardly tell a decay that is none from one (fat, a "
+            "field gradient and motion pass for more iron or less)."
+        ),
+        effect="A field gradient can add half to a low LIC without a trace.",
+        remedy="Acquire at least six echoes.",
+    ),
     "poor-fit": FindingWording(
         level="caution",
         text=(
@@ -170,8 +179,8 @@ MODEL_FINDINGS: dict[str, FindingWording] = {
     "decay-slightly-off": FindingWording(
         level="note",
         text=(
-            "Region {region}: {what}. Without it R2* would change by {shift}: too little to "
-            "move a LIC across a decision."
+            "Region {region}: {what}. Without it R2* would change by {shift}, as far as the echoes "
+            "tell: too little to move a LIC across a decision."
         ),
         effect="Less than 5 %, or less than 0.1 mg/g.",
         remedy="None needed; look at the residuals by echo if it returns in each scan.",
