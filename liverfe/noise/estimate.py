@@ -21,7 +21,7 @@ only ever add to air; fat and borders only ever add to the residuals."""
 _BY_CHANCE = 4.0
 _THE_SAME = 0.03
 """Whole air whose sigma is the tissue's to this share lies in the same noise: its number of
-channels, known to a few percent, is not given up for what dark echoes guess."""
+channels, known to a few percent, is given up only where dark echoes are very sure."""
 _DIFFER = 0.10
 """Beyond this share a third witness is heard."""
 
@@ -104,7 +104,7 @@ def _agree(air: NoiseCandidate, residual: NoiseCandidate, tissue: Tissue) -> boo
         return not air.is_partial
     apart = residual.sigma / air.sigma - 1.0
     if not air.is_partial and abs(apart) <= _THE_SAME:
-        return True
+        return tissue.allows(air.n_channels, at_odds=True)
     lower = max(_TISSUE_LOWER, _BY_CHANCE * tissue.residuals(air.n_channels).scatter)
     agree = -lower <= apart <= _TISSUE_HIGHER
     return agree and tissue.allows(air.n_channels)

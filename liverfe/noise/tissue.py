@@ -18,7 +18,8 @@ from liverfe.noise.variation import Variation, sigma_variation
 
 _NEARLY = 0.16
 """The number of channels of the air may lie outside what the tissue allows by this share."""
-_SURER = 1.5
+_SURER, _MUCH_SURER = 1.5, 4.0
+"""How many times beyond their own bounds dark echoes must deny a number that the air tells."""
 _OVER_FIRST_ECHO = 50.0
 """Where nothing else is known the joint likelihood first looks at the median first echo over this,
 ..."""
@@ -80,15 +81,20 @@ class Tissue:
         likelihood = self.likelihood if by_likelihood else None
         return channels_of_tissue(self.triplets, self.residuals, likelihood)
 
-    def allows(self, n_channels: int) -> bool:
-        """Whether the dark echoes agree with a number of channels, or tell nothing."""
+    def allows(self, n_channels: int, *, at_odds: bool = False) -> bool:
+        """Whether the dark echoes agree with a number of channels, or tell nothing.
+
+        `at_odds`: all else speaks for the number, so they must be surer still to deny it. Their
+        error is known to a factor only, as voxels of interpolated images share their noise.
+        """
         sigma = self.residuals(n_channels).sigma
         bounds = channels_of_dark_tissue(self.triplets, sigma) if sigma else None
         if bounds is None:
             return True
         # Against air that has told n the tissue must be surer than where it has to guess.
-        low = bounds.channels - _SURER * (bounds.channels - bounds.fewest)
-        high = bounds.channels + _SURER * (bounds.most - bounds.channels)
+        surer = _MUCH_SURER if at_odds else _SURER
+        low = bounds.channels - surer * (bounds.channels - bounds.fewest)
+        high = bounds.channels + surer * (bounds.most - bounds.channels)
         return bool(low * (1.0 - _NEARLY) <= n_channels <= high * (1.0 + _NEARLY))
 
     def joint(self, n_channels: int) -> NoiseCandidate:

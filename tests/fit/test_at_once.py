@@ -17,6 +17,8 @@ import pytest
 from liverfe.fit import fit_rows
 from tests.fit.decays import SIGMA_ONE, TWELVE_MS, decay, magnitudes
 
+pytestmark = pytest.mark.slow
+
 FIRST_CALLS = """
 from concurrent.futures import ThreadPoolExecutor
 from threading import Barrier

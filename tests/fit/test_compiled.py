@@ -15,6 +15,8 @@ import pytest
 
 from liverfe.fit import compiled
 
+pytestmark = pytest.mark.slow
+
 KERNEL = """
 from liverfe.fit.compiled import compiled
 

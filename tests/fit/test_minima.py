@@ -11,6 +11,8 @@ from liverfe.fit import ESTIMATORS, FitOutcome
 from liverfe.fit.comparators import _first_moment as first_moment_loops
 from tests.fit.decays import TWELVE_MS, Array, decay, expected_mean, fit, magnitudes
 
+pytestmark = pytest.mark.slow
+
 
 @pytest.mark.parametrize("model", ["least-squares", "first-moment"])
 @pytest.mark.parametrize("n", [1, 8])

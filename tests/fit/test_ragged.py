@@ -18,6 +18,8 @@ from liverfe.fit import (
 )
 from tests.fit.decays import SIGMA_ONE, TWELVE_MS, decay, fit, magnitudes
 
+pytestmark = pytest.mark.slow
+
 FIELDS = ("r2star_per_s", "s0", "r2star_se_per_s", "reduced_chi2", "outcome")
 COMPARATORS = ESTIMATORS[1:]
 NEEDS_THREE = ("offset", "autoregressive")

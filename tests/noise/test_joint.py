@@ -11,6 +11,8 @@ from liverfe.noise import estimate_noise
 from liverfe.study.decay_likelihood import decay_likelihood
 from tests.noise.abdomens import abdomen
 
+pytestmark = pytest.mark.slow
+
 SHAPE = (96, 80, 6)
 
 

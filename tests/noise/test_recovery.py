@@ -6,6 +6,8 @@ import pytest
 
 from tests.noise.recovery import KINDS, sigma_recovery
 
+pytestmark = pytest.mark.slow
+
 
 @pytest.mark.parametrize("kind", KINDS)
 @pytest.mark.parametrize("n", [1, 2, 4, 8, 16, 32])

@@ -8,6 +8,8 @@ import pytest
 from liverfe.noise import NoiseLevel, estimate_noise
 from tests.noise.abdomens import Abdomen, abdomen, liver_mask
 
+pytestmark = pytest.mark.slow
+
 SHAPE = (96, 80, 6)
 LIVER = liver_mask(SHAPE)
 ALONG, ACROSS = (np.linspace(-1, 1, size) for size in SHAPE[:2])

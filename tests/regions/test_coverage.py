@@ -10,6 +10,8 @@ import pytest
 
 from tests.regions.patches import Patch
 
+pytestmark = pytest.mark.slow
+
 RUNS = 100
 
 

@@ -17,6 +17,8 @@ from liverfe.outlines import LabelMask, Region
 from liverfe.phantom import expected_values, load_recipe, make_phantom
 from liverfe.study import Method, StudyResult, assess_study, refused_result
 
+pytestmark = pytest.mark.slow
+
 FAULTY = ("fatty-liver-1p5t", "moving-1p5t", "field-gradient-1p5t", "swapped-echoes-1p5t")
 
 

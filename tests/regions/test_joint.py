@@ -10,6 +10,8 @@ import pytest
 from liverfe.errors import StudyRefused
 from tests.regions.patches import Patch
 
+pytestmark = pytest.mark.slow
+
 WEAK = Patch(r2star_per_s=60.0, snr=4.0, side=20, size=32)
 """At S0 / sigma 4 one voxel knows R2* to 44 % at best, at 95 /s (Cramér-Rao bound, 1.0 + 1.2 k)."""
 

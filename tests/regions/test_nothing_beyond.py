@@ -13,6 +13,8 @@ from liverfe.maps import judge, repaint
 from liverfe.noise import NoiseLevel
 from liverfe.regions import RegionRules, summarise_region
 
+pytestmark = pytest.mark.slow
+
 SHAPE = (20, 18, 2)
 
 
