@@ -154,7 +154,9 @@ def test_processes_that_compile_at_once_do_not_disturb_each_other(folder: Path) 
     with ProcessPoolExecutor(3, mp_context=multiprocessing.get_context("spawn")) as pool:
         for done in [pool.submit(call, folder) for _ in range(3)]:
             assert done.result(timeout=120) in ("compiled", "taken")
-    assert call(folder) == "taken"
+    # On a busy machine one may have thrown away what another was about to keep: that costs one
+    # more compilation, and no more.
+    assert "taken" in (call(folder), call(folder))
     assert len(kept_files(folder)) == 1
 
 
