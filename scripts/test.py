@@ -3,7 +3,7 @@
 Makes `.venv` from the lock where it does not stand yet, then runs pytest on all cores.
 
     python3 scripts/test.py                 everything
-    python3 scripts/test.py --fast          the core alone, in a few minutes
+    python3 scripts/test.py --fast          the core alone, in about a minute
     python3 scripts/test.py tests/fit -k rician     anything that pytest takes
 """
 

@@ -25,6 +25,8 @@ from liverfe.acquire import find_stacks, load_stack
 from tests.acquire import dicom_study as made
 from tests.acquire.judging import assert_is_the_object, only_plan, squeeze
 
+pytestmark = pytest.mark.slow
+
 # ------------------------------------------------------------------------------- classic DICOM
 
 

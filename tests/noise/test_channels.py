@@ -8,6 +8,8 @@ import pytest
 from liverfe.noise import NoiseLevel, estimate_noise
 from tests.noise.abdomens import Abdomen, abdomen
 
+pytestmark = pytest.mark.slow
+
 SHAPE = (96, 80, 6)
 
 

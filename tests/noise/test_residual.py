@@ -9,6 +9,8 @@ from scipy import ndimage
 from liverfe.noise import sigma_from_residuals
 from tests.noise.abdomens import SHAPE, abdomen, stack_of, zero_filled
 
+pytestmark = pytest.mark.slow
+
 
 def share(magnitude: np.ndarray, times_ms: np.ndarray, sigma: float, n: int = 1) -> float:
     """What is found over the truth."""

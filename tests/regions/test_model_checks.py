@@ -13,6 +13,8 @@ from liverfe.regions.doubts import check_decay
 from liverfe.study import Method, assess_study
 from tests.scenes import ORGAN_VOXELS, TIMES_MS, Scene, make_scene
 
+pytestmark = pytest.mark.slow
+
 NOT_OF_THE_SIGNAL = {"band-depends-on-curve", "near-threshold", "channels-not-tested"}
 """Notes that a clean study may have too."""
 

@@ -10,6 +10,8 @@ from liverfe.regions.correlation import WHITE, NoiseCorrelation
 from liverfe.regions.precision import MedianPrecision, median_precision, spread
 from tests.regions.patches import Patch, interpolated_noise, square
 
+pytestmark = pytest.mark.slow
+
 
 def known_of(values: np.ndarray, mask: np.ndarray, **more: object) -> MedianPrecision:
     """Precision of values whose noise has SD 1."""

@@ -9,6 +9,8 @@ from liverfe.errors import StudyRefused
 from liverfe.study import ESTIMATORS, Method, StudyResult, assess_study, refused_result
 from tests.scenes import ORGAN_VOXELS, S0, Scene, make_scene
 
+pytestmark = pytest.mark.slow
+
 
 def assess(scene: Scene, *names: str, **choices: object) -> StudyResult:
     regions = [scene.region(name) for name in names or ("liver",)]
