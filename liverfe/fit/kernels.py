@@ -1,8 +1,7 @@
 """The compiled loops of maximum likelihood in double precision, for any signal model.
 
-Each voxel is worked out by itself, so results do not
-depend on chunks or threads. The kernels release the interpreter lock; whoever calls them may use
-plain threads (`liverfe.fit.blocks`).
+Each voxel is worked out by itself, so results do not depend on chunks or threads. The kernels
+release the interpreter lock; whoever calls them may use plain threads (`liverfe.fit.blocks`).
 
 Echo times are in ms here and R2* in 1/ms; amplitudes in units of sigma.
 """
